@@ -72,6 +72,8 @@ class FieldSpec(msgspec.Struct, frozen=True, kw_only=True, forbid_unknown_fields
     spacing: cell size per axis in the run's units; () unknown.
     origin: coordinate of cell 0 per axis; () means zero.
     periodic: per axis; () means not known.
+    grid: False for values without a grid (unstructured numbering): taken as one row of numbers
+        and judged by its bulk only.
     min, max: bounds that the field must keep.
     growth_per_time: a physical growth rate per unit time that is expected and never alarmed.
     """
@@ -85,6 +87,7 @@ class FieldSpec(msgspec.Struct, frozen=True, kw_only=True, forbid_unknown_fields
     spacing: tuple[float, ...] = ()
     origin: tuple[float, ...] = ()
     periodic: tuple[bool, ...] = ()
+    grid: bool = True
     min: float | None = None
     max: float | None = None
     growth_per_time: float = 0.0

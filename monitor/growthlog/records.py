@@ -78,6 +78,7 @@ class Channel(msgspec.Struct, frozen=True, omit_defaults=True):
     floor: ln of the level that storage rounding alone would give the ripple.
     cells: wavelength in cells of the ripple part of the difference (two-order ratio), pooled.
     vary: ln rms of the field's variation (deviation from its mean).
+    top: ln of the largest number of the storage type, where that is not float64.
     """
 
     f: str
@@ -89,6 +90,7 @@ class Channel(msgspec.Struct, frozen=True, omit_defaults=True):
     floor: float | None = None
     cells: float | None = None
     vary: float | None = None
+    top: float | None = None
     bad: int = 0
     total: Num | None = None
 

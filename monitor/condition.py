@@ -1,0 +1,361 @@
+"""Decide: a pure fold over evidence records.
+
+`decide(state, evidence, ...)` sees records exactly as the growth log holds them, so the live guard
+and a later rehearsal of the log cannot differ.
+"""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Mapping
+from dataclasses import dataclass
+
+import msgspec
+import numpy as np
+
+from monitor.config import AlarmSection
+from monitor.growthlog.records import (
+    Channel,
+    Condition,
+    Estimate,
+    Evidence,
+    Kind,
+    Mode,
+    Verdict,
+)
+from probes import forecast
+from probes.onset import rising, straight_rise
+from probes.spec import FieldSpec
+
+# Levels kept per field; older ones are thinned by dropping every second.
+_KEPT = 512
+# A level has to stand this far above its rounding floor (in ln) to count.
+OVER_FLOOR = math.log(6.0)
+# Longest wavelength, in cells, up to which growth is suspicious though not damning.
+_DOUBTFUL_CELLS = 6.5
+_DOUBLE_LARGEST = 709.78
+
+
+class Series(msgspec.Struct, frozen=True):
+    """Levels of one field over the segment: x (step or count), then natural logarithms."""
+
+    x: tuple[float, ...] = ()
+    ripple: tuple[float | None, ...] = ()
+    bulk: tuple[float | None, ...] = ()
+    floor: tuple[float | None, ...] = ()
+    cells: tuple[float | None, ...] = ()
+
+
+class State(msgspec.Struct, frozen=True):
+    """What the decision remembers of a segment. Serialisable as it is."""
+
+    seen: int = 0
+    condition: Condition = "gathering"
+    kind: Kind = "none"
+    alarmed: bool = False
+    calm: int = 0
+    series: dict[str, Series] = {}
+    dts: tuple[float, ...] = ()
+
+
+def start() -> State:
+    """State at the beginning of a segment."""
+    return State()
+
+
+@dataclass(frozen=True)
+class Finding:
+    """One piece of evidence for growth. weight orders findings; condition is what it calls for."""
+
+    condition: Condition
+    kind: Kind
+    field: str
+    why: str
+    weight: float
+    factor: Estimate | None = None
+    cells: float | None = None
+    onset: tuple[int, int] | None = None
+
+
+def decide(
+    state: State,
+    evidence: Evidence,
+    step: int | None,
+    index: int,
+    alarm: AlarmSection,
+    fields: Mapping[str, FieldSpec],
+) -> tuple[State, Verdict]:
+    """Fold one evidence record in. step None: `index` (snapshots of the segment) counts instead."""
+    x = float(step if step is not None else index)
+    series = {
+        c.f: _appended(state.series.get(c.f, Series()), x, c, evidence.uneven)
+        for c in evidence.channels
+    }
+    dts = (*state.dts, evidence.dt)[-32:] if evidence.dt is not None else state.dts
+    state = msgspec.structs.replace(state, seen=state.seen + 1, series=series, dts=dts)
+    findings = [
+        *_outside(evidence, fields),
+        *_collapsing(state.dts),
+        *(f for name in series for f in _lines(name, series[name], evidence, alarm, fields)),
+        *_tile_line(evidence, alarm, x),
+        *_modes(evidence, alarm, fields, x),
+    ]
+    return _settle(state, evidence, findings, alarm)
+
+
+def _settle(
+    state: State, evidence: Evidence, findings: list[Finding], alarm: AlarmSection
+) -> tuple[State, Verdict]:
+    """From findings to the condition, with its memory."""
+    ladder: tuple[Condition, ...] = ("gathering", "quiet", "swelling", "runaway", "overflowed")
+    base: Condition = "quiet" if state.seen >= 4 else "gathering"
+    best = max(
+        findings, key=lambda f: (ladder.index(f.condition), f.weight), default=None
+    )
+    called = max([base, *(f.condition for f in findings)], key=ladder.index)
+    condition, calm = called, 0
+    if ladder.index(called) < ladder.index(state.condition) and state.condition != "gathering":
+        calm = state.calm + 1
+        if state.condition == "overflowed" or calm < alarm.calm:
+            condition = state.condition
+        else:
+            calm = 0
+    alarmed = state.alarmed or condition in ("runaway", "overflowed")
+    kind: Kind = best.kind if best is not None else "none"
+    if condition != called and best is None:
+        kind = state.kind
+    why = best.why if best is not None else ""
+    if condition != called:
+        why = f"{condition} until {alarm.calm} quiet snapshots have passed ({calm} so far)"
+    verdict = Verdict(condition=condition, kind=kind, alarmed=alarmed, why=why)
+    if best is not None:
+        verdict = msgspec.structs.replace(
+            verdict, field=best.field, factor=best.factor, cells=best.cells, onset=best.onset,
+            **_headroom(evidence, best),
+        )
+    new = msgspec.structs.replace(
+        state, condition=condition, kind=kind, alarmed=alarmed, calm=calm
+    )
+    return new, verdict
+
+
+def _headroom(evidence: Evidence, best: Finding) -> dict[str, Estimate | None]:
+    """Steps to ruin and to overflow, as ranges or reasons."""
+    local, factor = evidence.local, best.factor
+    if factor is None or not isinstance(factor.value, float) or best.kind == "resolved":
+        return {}
+    low = factor.low if isinstance(factor.low, float) else factor.value
+    high = factor.high if isinstance(factor.high, float) else factor.value
+    if local is None or not isinstance(local.value, float):
+        reason = local.reason if local is not None else "the growing part has no size yet"
+        return {"ruin": Estimate(reason=reason), "overflow": Estimate(reason=reason)}
+    ruin = forecast.steps_until(local.value, factor.value, low, high, 2.0)
+    channel = next((c for c in evidence.channels if c.f == best.field), None)
+    overflow = forecast.Range.none("the size of the field is not known")
+    if channel is not None and channel.vary is not None:
+        largest = channel.top if channel.top is not None else _DOUBLE_LARGEST
+        size = channel.vary + math.log(local.value)
+        overflow = forecast.steps_until(
+            math.exp(max(-700.0, size - largest)), factor.value, low, high, 2.0
+        )
+    return {"ruin": _estimate(ruin), "overflow": _estimate(overflow)}
+
+
+def _estimate(r: forecast.Range) -> Estimate:
+    return Estimate(r.value, r.low, r.high, r.coverage, r.reason)
+
+
+def _appended(s: Series, x: float, c: Channel, uneven: bool) -> Series:
+    # Uneven strides weight each mode differently in every difference; the ripple of the snapshots
+    # themselves does not depend on the stride.
+    ripple = c.own if uneven else c.ripple
+    out = Series(
+        (*s.x, x), (*s.ripple, ripple), (*s.bulk, c.bulk), (*s.floor, c.floor), (*s.cells, c.cells)
+    )
+    if len(out.x) > _KEPT:
+        half = _KEPT // 2
+        keep = [*range(0, half, 2), *range(half, len(out.x))]
+        out = Series(*(tuple(v[i] for i in keep) for v in msgspec.structs.astuple(out)))
+    return out
+
+
+# --- findings -------------------------------------------------------------------------------
+
+
+def _outside(evidence: Evidence, fields: Mapping[str, FieldSpec]) -> list[Finding]:
+    """Non-finite values and values outside declared bounds."""
+    out = []
+    for c in evidence.channels:
+        if c.bad:
+            place = ""
+            if evidence.bad_at is not None and evidence.bad_at[0] == c.f:
+                place = f", first at {list(evidence.bad_at[2])}"
+            out.append(
+                Finding(
+                    "overflowed", "numerical", c.f,
+                    f"{c.f} holds {c.bad} values that are not finite{place}", 1e9,
+                )
+            )
+        spec = fields.get(c.f.split("[")[0])
+        if spec is None or isinstance(c.lo, str) or isinstance(c.hi, str):
+            continue
+        if spec.min is not None and c.lo < spec.min:
+            why = f"{c.f} falls to {c.lo:.4g}, below its bound {spec.min:.4g}"
+            out.append(Finding("runaway", "numerical", c.f, why, 1e6))
+        if spec.max is not None and c.hi > spec.max:
+            why = f"{c.f} rises to {c.hi:.4g}, above its bound {spec.max:.4g}"
+            out.append(Finding("runaway", "numerical", c.f, why, 1e6))
+    return out
+
+
+def _collapsing(dts: tuple[float, ...]) -> list[Finding]:
+    """An adaptive step that shrinks and shrinks, or a clock that stands still."""
+    if len(dts) >= 2 and dts[-1] <= 0.0 and dts[-2] <= 0.0:
+        why = "the solver's time has not advanced over the last two snapshots"
+        return [Finding("swelling", "undetermined", "", why, 5.0)]
+    if len(dts) < 8:
+        return []
+    usual = float(np.median(dts[:-4]))
+    last = dts[-4:]
+    if usual > 0 and last[-1] < 0.1 * usual and all(
+        b < a for a, b in zip(last[:-1], last[1:], strict=True)
+    ):
+        why = f"the time step collapses: {last[-1]:.3g} against {usual:.3g} usually"
+        return [Finding("swelling", "undetermined", "", why, 5.0)]
+    return []
+
+
+def _lines(
+    name: str, s: Series, evidence: Evidence, alarm: AlarmSection, fields: Mapping[str, FieldSpec]
+) -> list[Finding]:
+    """Rises of the whole field's ripple level."""
+    tail = 0
+    for r in reversed(s.ripple):
+        if r is None:
+            break
+        tail += 1
+    if tail < 6:
+        return []
+    x = np.array(s.x[-tail:])
+    y = np.array([v if v is not None else -math.inf for v in s.ripple[-tail:]])
+    floor = np.array([v if v is not None else -math.inf for v in s.floor[-tail:]])
+    over = y > floor + OVER_FLOOR
+    if not over[-1]:
+        return []
+    recent = [c for c in s.cells[-3:] if c is not None]
+    cells = float(np.median(recent)) if recent else None
+    short = cells is not None and max(recent) <= alarm.cells
+    doubtful = cells is not None and cells <= _DOUBTFUL_CELLS
+    spec = fields.get(name.split("[")[0])
+    unit = "step"
+    line = straight_rise(x, y, over, alarm.decades * math.log(10.0), alarm.straight)
+    if line is not None and short and not _expected(line.fit.slope, evidence, spec):
+        factor = _factor(line.fit.slope, line.fit.error)
+        why = (
+            f"{name}: grid-scale ripple grew ×{math.exp(line.fit.rise):.3g} on a straight line over "
+            f"{line.fit.points} snapshots, {math.exp(line.fit.slope):.5g} per {unit}, "
+            f"{cells:.1f} cells long"
+        )
+        onset = _onset(x, y, floor, line.start, line.fit.slope)
+        return [Finding("runaway", "numerical", name, why, line.fit.rise, factor, cells, onset)]
+    found = rising(x, y, alarm.run_length)
+    if found is None or found.fit.rise < math.log(3.0):
+        return []
+    factor = _factor(found.fit.slope, found.fit.error)
+    what = (
+        f"{name}: grid-scale ripple grows, ×{math.exp(found.fit.rise):.3g} over "
+        f"{found.fit.points} snapshots"
+    )
+    if not doubtful or _expected(found.fit.slope, evidence, spec):
+        why = what + (f", at a resolved {cells:.1f} cells" if cells is not None else "")
+        return [Finding("quiet", "resolved", name, why, 0.0, factor, cells)]
+    onset = _onset(x, y, floor, found.start, found.fit.slope)
+    return [
+        Finding(
+            "swelling", "undetermined", name, f"{what}, {cells:.1f} cells long", found.fit.rise,
+            factor, cells, onset,
+        )
+    ]
+
+
+def _factor(slope: float, error: float) -> Estimate:
+    return Estimate(
+        math.exp(slope), math.exp(slope - 2.0 * error), math.exp(slope + 2.0 * error), 0.9
+    )
+
+
+def _expected(slope: float, evidence: Evidence, spec: FieldSpec | None) -> bool:
+    """Whether the user declared this growth (within 20 % of a rate per unit time, or slower)."""
+    if spec is None or spec.growth_per_time <= 0.0 or not evidence.dt:
+        return False
+    return slope / evidence.dt <= 1.2 * spec.growth_per_time
+
+
+def _onset(
+    x: np.ndarray, y: np.ndarray, floor: np.ndarray, start: int, slope: float
+) -> tuple[int, int]:
+    """Interval of the step at which the growth began: from where its line leaves the rounding
+    floor, extrapolated backwards, to the first point seen on it."""
+    level = y[-1]
+    back = (level - floor[-1]) / slope if slope > 0 and math.isfinite(floor[-1]) else 0.0
+    high = float(x[start])
+    return int(max(0.0, min(high, x[-1] - back))), int(high)
+
+
+def _tile_line(evidence: Evidence, alarm: AlarmSection, x: float) -> list[Finding]:
+    """A straight rise in one tile: earlier where the growth is local, but a wave that arrives does
+    the same, so that alone it only raises suspicion."""
+    line = evidence.line
+    if line is None or line.cells is None or line.cells > alarm.cells - 0.5:
+        return []
+    per = evidence.stride or 1
+    factor = _factor(line.slope / per, 0.02 * line.slope / per)
+    why = (
+        f"{line.f}: ripple in tile {line.tile} grew ×{math.exp(line.rise):.3g} on a straight line "
+        f"over {line.span} snapshots, {line.cells:.1f} cells long"
+    )
+    onset = (int(max(0.0, x - line.over / line.slope * per)), int(x - line.span * per))
+    return [
+        Finding("swelling", "undetermined", line.f, why, line.rise, factor, line.cells,
+                (min(onset), onset[1]))
+    ]
+
+
+def _modes(
+    evidence: Evidence, alarm: AlarmSection, fields: Mapping[str, FieldSpec], x: float
+) -> list[Finding]:
+    """Ritz pairs that persist between windows."""
+    out = []
+    for m in evidence.modes:
+        if m.held < alarm.held:
+            continue
+        short = m.cells is not None and m.cells <= alarm.cells
+        if m.view == "bulk" and not m.odd:
+            short = False
+        spec = fields.get(m.f.split("[")[0])
+        expected = _expected(math.log(m.factor), evidence, spec)
+        factor = Estimate(m.factor, m.low, m.high, 0.9)
+        what = (
+            f"{m.f}: a mode persists over {m.held} snapshots and grows {m.factor:.5g} per step"
+            + (f", {m.cells:.1f} cells long" if m.cells is not None else "")
+        )
+        if (short or m.odd) and not expected:
+            if m.odd and not short:
+                what += ", alternating in sign from step to step"
+            out.append(
+                Finding("runaway", "numerical", m.f, what, 100.0 + m.held, factor, m.cells,
+                        _mode_onset(m, evidence, x))
+            )
+        else:
+            out.append(Finding("quiet", "resolved", m.f, what, 1.0, factor, m.cells))
+    return out
+
+
+def _mode_onset(m: Mode, evidence: Evidence, x: float) -> tuple[int, int]:
+    per = evidence.stride or 1
+    first_seen = int(x - m.held * per)
+    channel = next((c for c in evidence.channels if c.f == m.f), None)
+    if channel is None or channel.ripple is None or channel.floor is None:
+        return first_seen, first_seen
+    back = (channel.ripple - channel.floor) / math.log(m.factor)
+    return int(max(0.0, min(first_seen, x - back))), first_seen

@@ -1,0 +1,100 @@
+"""Is a level rising, and since when? Tests on series of ln levels. Pure functions.
+
+The slope of the level is tested over a geometric set of window lengths, a generalised likelihood
+ratio for "level until some time, straight rise since" (Page 1954 for the idea of sequential
+detection, Lorden 1971 for its optimality). Sums of increments are not used: the increments of a
+noisy level form a moving average whose sum telescopes, so that slow growth is never found.
+"""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Iterator
+from dataclasses import dataclass
+
+import numpy as np
+from numpy.typing import NDArray
+from scipy.special import stdtrit
+
+from probes.growth import Fit, fit_line
+
+Array = NDArray[np.float64]
+
+SHORTEST = 6
+_WIDER = 1.35
+
+
+def windows(points: int, shortest: int = SHORTEST) -> Iterator[int]:
+    """Window lengths up to `points`, growing by about a third each."""
+    n = shortest
+    while n <= points:
+        yield n
+        n = max(n + 1, round(n * _WIDER))
+
+
+@dataclass(frozen=True, slots=True)
+class Rise:
+    """A rise found in a window of the last `points` values: its line, and the score (slope over
+    its standard error, widened for correlated residuals) with the threshold it had to pass."""
+
+    fit: Fit
+    score: float
+    threshold: float
+    start: int
+
+
+def correlation(residual: Array) -> float:
+    """Lag-one autocorrelation of residuals, kept within 0 to 0.95 (negative ones help nobody)."""
+    square = float(residual @ residual)
+    if square == 0.0:
+        return 0.0
+    return min(0.95, max(0.0, float(residual[1:] @ residual[:-1]) / square))
+
+
+def threshold(points: int, run_length: float) -> float:
+    """Score that noise exceeds about once in `run_length` snapshots, for one window length.
+
+    Student's t with points - 2 degrees of freedom. Successive windows overlap, so the number of
+    independent looks per snapshot at all window lengths together is about one (found by simulation
+    on white noise, see the tests).
+    """
+    return float(-stdtrit(points - 2, 1.0 / run_length))
+
+
+def rising(x: Array, y: Array, run_length: float) -> Rise | None:
+    """The most significant rise among the windows that end now, or None.
+
+    x: (points,) steps or counts; y: (points,) finite ln levels, oldest first.
+    """
+    best: Rise | None = None
+    for n in windows(len(y), 8):
+        fit = fit_line(x[-n:], y[-n:])
+        if fit.slope <= 0.0:
+            continue
+        line = y[-n:].mean() + fit.slope * (x[-n:] - x[-n:].mean())
+        rho = correlation(y[-n:] - line)
+        error = fit.error * math.sqrt((1.0 + rho) / (1.0 - rho))
+        score = fit.slope / error if error > 0.0 else math.inf
+        limit = threshold(n, run_length)
+        if score > limit and (best is None or score / limit > best.score / best.threshold):
+            best = Rise(fit, score, limit, len(y) - n)
+    return best
+
+
+def straight_rise(
+    x: Array, y: Array, over: NDArray[np.bool_], rise: float, straight: float
+) -> Rise | None:
+    """The longest window that ends now in which y rises by at least `rise` on a straight line.
+
+    over: (points,) whether a value stands above its floor; the later half of a window must. The
+    residual rms may be at most `straight` times the rise.
+    """
+    best: Rise | None = None
+    for n in windows(len(y)):
+        part = y[-n:]
+        if not np.isfinite(part).all() or not over[-(n - n // 2) :].all():
+            continue
+        fit = fit_line(x[-n:], part)
+        if fit.rise >= rise and fit.rms <= straight * fit.rise:
+            best = Rise(fit, fit.slope / fit.error if fit.error > 0.0 else math.inf, 0.0, len(y) - n)
+    return best
