@@ -30,13 +30,15 @@ def loaded(code: str, folder: Path) -> set[str]:
 
 def test_help_loads_no_library(tmp_path: Path) -> None:
     """`stepwarden --help` needs the standard library and the command table only."""
-    assert loaded("from monitor.cli import main; assert main(["--help"]) == 0", tmp_path) & HEAVY == set()
+    got = loaded("from monitor.cli import main; assert main(['--help']) == 0", tmp_path)
+    assert got & HEAVY == set()
 
 
 @pytest.mark.parametrize("command", ["guard", "review", "pins", "verify", "scout", "desk", "demo"])
 def test_help_of_a_command_loads_no_screen_and_no_science(command: str, tmp_path: Path) -> None:
     """Options are declared without importing what the command will need."""
-    got = loaded(f"from monitor.cli import main; assert main([{command!r}, '--help']) == 0", tmp_path)
+    code = f"from monitor.cli import main; assert main([{command!r}, '--help']) == 0"
+    got = loaded(code, tmp_path)
     assert got & {"textual", "scipy", "h5py", "numpy", "watchdog"} == set()
 
 
