@@ -1,5 +1,5 @@
-"""Follow a run without a screen: read each snapshot once, write the growth log, raise the alarm, pin
-a clean checkpoint and, where that is configured, have the run stopped.
+"""Follow a run without a screen: read each snapshot once, write the growth log, raise the alarm,
+pin a clean checkpoint and, where that is configured, have the run stopped.
 
 Without FILE and --snapshots, stepwarden.toml in the current folder is taken. Options given here win
 over the file.

@@ -8,8 +8,15 @@ from __future__ import annotations
 
 from argparse import ArgumentParser, Namespace
 from pathlib import Path
+from typing import TYPE_CHECKING
 
 from monitor.exits import Exit
+
+if TYPE_CHECKING:
+    from monitor.verify import Ask
+
+# The worst verdict among several checkpoints decides.
+_STATUS = {"overflowed": Exit.OVERFLOWED, "unfit": Exit.ALARM, "unreadable": Exit.UNREADABLE}
 
 
 def declare(parser: ArgumentParser) -> None:
@@ -20,15 +27,27 @@ def declare(parser: ArgumentParser) -> None:
 
 
 def run(options: Namespace) -> int:
+    from contextlib import ExitStack, closing
+
+    from monitor.childkeeper import ChildKeeper
     from monitor.growthlog.read import read_log
     from monitor.logfinding import find_log
-    from monitor.verify import examine
+    from monitor.verify import known, verify
     from monitor.wording import clean
+    from probes.spec import WatchSpec
 
-    contents = read_log(find_log(options.log)) if options.log else None
-    findings = [examine(path, contents) for path in options.checkpoints]
-    for finding in findings:
+    log = None
+    if options.log:
+        path = find_log(options.log)
+        log = known(read_log(path), path.parent)
+    found = set()
+    for checkpoint in options.checkpoints:
+        with ExitStack() as stack:
+
+            def ask(watch: WatchSpec, stack: ExitStack = stack) -> Ask:
+                return stack.enter_context(closing(ChildKeeper(watch, ()))).ask
+
+            finding = verify(checkpoint, log, ask)
         print(clean(finding.text()))
-    worst = {"overflowed": Exit.OVERFLOWED, "unfit": Exit.ALARM, "unreadable": Exit.UNREADABLE}
-    found = {finding.verdict for finding in findings}
-    return next((status for verdict, status in worst.items() if verdict in found), Exit.GOOD)
+        found.add(finding.verdict)
+    return next((status for verdict, status in _STATUS.items() if verdict in found), Exit.GOOD)
