@@ -1,7 +1,9 @@
 """Record types of the growth log: one JSON object a line, plain ASCII, append-only.
 
-Field names are short because a three-day run writes tens of thousands of lines; every one is
-spelled out here. Floats carry four significant digits. JSON has no NaN or infinity: floats that
+A three-day run writes tens of thousands of lines, so the parts of a snapshot record have short
+names in the file (`rename`) or are lists of values in the order given here (`array_like`: new
+fields only at the end, with a default). Floats carry four significant digits (see
+`monitor.growthlog.numbers` for the exceptions). JSON has no NaN or infinity: floats that
 may be non-finite have the type `Num`, a number or one of "nan", "inf", "-inf".
 Readers skip unknown fields, and count lines that they cannot read.
 """
@@ -21,7 +23,17 @@ Pulse = Literal["arriving", "stalled", "finished"]
 Box = tuple[tuple[int, int], ...]
 
 
-class Estimate(msgspec.Struct, frozen=True, omit_defaults=True):
+# gc=False: records hold no reference cycles, and a log of a million of them is read much faster
+# when the collector of cycles does not walk over them.
+
+
+class Estimate(
+    msgspec.Struct,
+    frozen=True,
+    omit_defaults=True,
+    gc=False,
+    rename={"value": "v", "low": "l", "high": "h", "coverage": "c"},
+):
     """A value with its doubt: an interval (low, high) at `coverage`, or a reason for no value."""
 
     value: Num | None = None
@@ -31,7 +43,9 @@ class Estimate(msgspec.Struct, frozen=True, omit_defaults=True):
     reason: str = ""
 
 
-class Record(msgspec.Struct, frozen=True, kw_only=True, omit_defaults=True, tag_field="rec"):
+class Record(
+    msgspec.Struct, frozen=True, kw_only=True, omit_defaults=True, gc=False, tag_field="rec"
+):
     """Base: seq counts records from 1 in one log; at is wall-clock seconds since the epoch."""
 
     seq: int
@@ -67,7 +81,21 @@ class Segment(Record, frozen=True, kw_only=True, tag="segment"):
     blocks: tuple[tuple[str, str, tuple[int, ...], tuple[int, ...]], ...] = ()
 
 
-class Channel(msgspec.Struct, frozen=True, omit_defaults=True):
+class Channel(
+    msgspec.Struct,
+    frozen=True,
+    omit_defaults=True,
+    gc=False,
+    rename={
+        "bulk": "b",
+        "ripple": "r",
+        "own": "o",
+        "floor": "fl",
+        "cells": "c",
+        "vary": "v",
+        "total": "sum",
+    },
+):
     """One field's levels in one snapshot. Levels are natural logarithms of rms per cell (bulk) or
     per stencil position (ripple), of the difference to the previous snapshot, in field units.
 
@@ -95,11 +123,12 @@ class Channel(msgspec.Struct, frozen=True, omit_defaults=True):
     total: Num | None = None
 
 
-class Mode(msgspec.Struct, frozen=True, omit_defaults=True):
+class Mode(msgspec.Struct, frozen=True, array_like=True, gc=False):
     """A Ritz pair of the map from one snapshot difference to the next (field f).
 
     re, im: Ritz value per snapshot; factor: its modulus per step with interval [low, high].
-    residual: relative. span: snapshots in the Krylov window.
+    residual: relative. share: of the last difference, in the columns of the view.
+    span: snapshots in the Krylov window.
     cells: wavelength over all axes; axes: per axis, 0 where not seen.
     held: snapshots over which this pair has persisted (0 = first seen now).
     match: squared cosine with the vector of one window earlier; gain: ln of its amplitude over
@@ -107,7 +136,7 @@ class Mode(msgspec.Struct, frozen=True, omit_defaults=True):
     amp: ln rms amplitude of the growing part in the field (difference times |mu|/|mu-1|), None
         where |mu - 1| is within its doubt.
     view: "ripple" or "bulk": the columns it was computed in.
-    odd: a phase that no resolved motion can have (negative real, at odd stride).
+    odd: a phase that no resolved motion has (negative real at an odd stride).
     """
 
     f: str
@@ -118,6 +147,7 @@ class Mode(msgspec.Struct, frozen=True, omit_defaults=True):
     high: float
     residual: float
     span: int
+    share: float = 1.0
     view: Literal["ripple", "bulk"] = "ripple"
     cells: float | None = None
     axes: tuple[float, ...] = ()
@@ -125,11 +155,12 @@ class Mode(msgspec.Struct, frozen=True, omit_defaults=True):
     match: float = 0.0
     gain: float = 0.0
     foretold: float = 0.0
+    grown: float = 0.0
     amp: float | None = None
     odd: bool = False
 
 
-class Line(msgspec.Struct, frozen=True, omit_defaults=True):
+class Line(msgspec.Struct, frozen=True, array_like=True, gc=False):
     """The straightest rise of a ripple level, over the whole field or in one tile.
 
     slope: d ln(level) per snapshot; rise: ln of the rise over the window; rms: of the residuals,
@@ -146,7 +177,7 @@ class Line(msgspec.Struct, frozen=True, omit_defaults=True):
     over: float = 0.0
 
 
-class Worst(msgspec.Struct, frozen=True, array_like=True):
+class Worst(msgspec.Struct, frozen=True, array_like=True, gc=False):
     """A tile that grows: number (global over blocks), share of the growing energy, factor/step."""
 
     tile: int
@@ -154,7 +185,27 @@ class Worst(msgspec.Struct, frozen=True, array_like=True):
     factor: float
 
 
-class Evidence(msgspec.Struct, frozen=True, kw_only=True, omit_defaults=True):
+class Evidence(
+    msgspec.Struct,
+    frozen=True,
+    kw_only=True,
+    omit_defaults=True,
+    gc=False,
+    rename={
+        "channels": "ch",
+        "stride": "st",
+        "uneven": "un",
+        "fresh": "n",
+        "modes": "m",
+        "line": "l",
+        "worst": "w",
+        "edges": "ed",
+        "contamination": "co",
+        "local": "lo",
+        "where": "at",
+        "limits": "lim",
+    },
+):
     """Everything the decision may use, reduced from the sketches of one snapshot.
 
     stride: steps since the previous snapshot (None if unknown: factors are per snapshot).
@@ -166,6 +217,7 @@ class Evidence(msgspec.Struct, frozen=True, kw_only=True, omit_defaults=True):
     contamination, local: estimated share of the unstable part in the field's variation.
     fresh: snapshots in the window (2 needed for a difference).
     box: index box on the cells, from crops, of field and part named by `where`.
+    cut: entries left out so that the record stays short (`monitor.growthlog.fitting`).
     """
 
     channels: tuple[Channel, ...]
@@ -183,9 +235,26 @@ class Evidence(msgspec.Struct, frozen=True, kw_only=True, omit_defaults=True):
     box: Box | None = None
     bad_at: tuple[str, str, tuple[int, ...]] | None = None
     limits: dict[str, float] = {}
+    cut: int = 0
 
 
-class Verdict(msgspec.Struct, frozen=True, kw_only=True, omit_defaults=True):
+class Verdict(
+    msgspec.Struct,
+    frozen=True,
+    kw_only=True,
+    omit_defaults=True,
+    gc=False,
+    rename={
+        "condition": "is",
+        "alarmed": "al",
+        "field": "f",
+        "factor": "g",
+        "cells": "c",
+        "onset": "on",
+        "ruin": "ru",
+        "overflow": "ov",
+    },
+):
     """What the decision made of the evidence: `alarmed` is latched per segment.
 
     why: one sentence of evidence in words and numbers. field: where it grows.
@@ -206,7 +275,22 @@ class Verdict(msgspec.Struct, frozen=True, kw_only=True, omit_defaults=True):
     overflow: Estimate | None = None
 
 
-class Snapshot(Record, frozen=True, kw_only=True, tag="snap"):
+class Snapshot(
+    Record,
+    frozen=True,
+    kw_only=True,
+    tag="snap",
+    rename={
+        "key": "k",
+        "path": "p",
+        "index": "i",
+        "seg": "sg",
+        "time": "t",
+        "mtime": "mt",
+        "evidence": "ev",
+        "verdict": "vd",
+    },
+):
     """One snapshot, judged. key identifies the content; path is relative to the run's folder.
 
     step None: unknown, `index` counts snapshots of the segment. mtime: of the file, seconds.
