@@ -2,11 +2,21 @@
 
 from __future__ import annotations
 
-from typing import Literal
+import os
+import tomllib
+from collections.abc import Iterable, Mapping
+from pathlib import Path
+from typing import Any, Literal
 
 import msgspec
 
-from probes.spec import FieldSpec, SketchSpec, SnapshotSpec
+from monitor.settings_report import Problem, convert_keys, raise_all
+from monitor.settings_rules import broken_rules
+from probes.errors import SettingsError
+from probes.spec import FieldSpec, SketchSpec, SnapshotSpec, WatchSpec
+
+# A settings file is written by a person; anything longer is some other file.
+_LARGEST_FILE = 1 << 20
 
 
 class Section(msgspec.Struct, frozen=True, kw_only=True, forbid_unknown_fields=True):
@@ -57,6 +67,7 @@ class AlarmSection(Section, frozen=True, kw_only=True):
     decades: rise of a level on a straight line that an alarm needs.
     straight: largest rms of that line's residuals as a share of the rise.
     cells: longest wavelength that counts as grid-scale.
+    mode_cells: the same for a single mode, whose wavelength is known better.
     held: snapshots over which a Ritz pair must persist.
     calm: quiet snapshots after which `swelling` falls back.
     """
@@ -64,7 +75,8 @@ class AlarmSection(Section, frozen=True, kw_only=True):
     run_length: float = 1e5
     decades: float = 2.0
     straight: float = 0.04
-    cells: float = 4.5
+    cells: float = 4.3
+    mode_cells: float = 4.0
     held: int = 6
     calm: int = 12
 
@@ -115,3 +127,89 @@ class Settings(Section, frozen=True, kw_only=True):
     pins: PinSection = PinSection()
     stop: tuple[StopStep, ...] = ()
     notify: NotifySection = NotifySection()
+
+
+def load(path: Path) -> Settings:
+    """The settings in the file at `path`.
+
+    Paths in them stay as written: relative ones start from the file's folder (see `watch_spec` and
+    `log_path`). Raises SettingsError that tells every problem at once.
+    """
+    try:
+        with path.open("rb") as file:
+            data = file.read(_LARGEST_FILE + 1)
+    except FileNotFoundError as error:
+        remedy = "`stepwarden scout FOLDER` proposes one"
+        raise SettingsError("there is no such settings file", str(path), remedy) from error
+    except OSError as error:
+        raise SettingsError(f"cannot be read ({error.strerror})", str(path)) from error
+    if len(data) > _LARGEST_FILE:
+        raise SettingsError("is too long for a settings file", str(path), "is it the right one?")
+    try:
+        tables = tomllib.loads(data.decode("utf-8-sig"))
+    except UnicodeDecodeError as error:
+        raise SettingsError("is not text in UTF-8", str(path), "is it the right file?") from error
+    except (tomllib.TOMLDecodeError, RecursionError) as error:
+        what = str(error) if isinstance(error, tomllib.TOMLDecodeError) else "too deeply nested"
+        raise SettingsError(f"is not valid TOML: {what}", str(path)) from error
+    return _settings(tables, str(path))
+
+
+def from_options(
+    patterns: Iterable[str],
+    fields: Iterable[str] = (),
+    overrides: Mapping[str, Any] | None = None,
+    *,
+    log: str | None = None,
+) -> Settings:
+    """Settings without a file: `patterns` to watch, names of `fields` to judge (none: all).
+
+    overrides: tables as in the file, which win over the rest. Raises SettingsError like `load`.
+    """
+    tables: dict[str, Any] = {
+        "snapshots": {"pattern": list(patterns)},
+        "fields": {name: {} for name in fields},
+        "run": {} if log is None else {"log": log},
+    }
+    return _settings(_merged(tables, overrides or {}), "options")
+
+
+def checked(settings: Settings, source: str = "options") -> Settings:
+    """`settings` put together from parts. Raises SettingsError where a value breaks a rule."""
+    sections = {name: getattr(settings, name) for name in settings.__struct_fields__}
+    raise_all(broken_rules(sections), source)
+    return settings
+
+
+def watch_spec(settings: Settings, folder: Path) -> WatchSpec:
+    """What the reading process needs of the settings; relative patterns start from `folder`."""
+    return WatchSpec(
+        folder=os.path.abspath(folder),
+        snapshots=settings.snapshots,
+        fields=settings.fields,
+        sketch=settings.sketch,
+    )
+
+
+def log_path(settings: Settings, folder: Path) -> Path:
+    """The growth log; a relative one starts from `folder`, that of the settings file."""
+    return Path(os.path.abspath(folder / settings.run.log))
+
+
+def _settings(tables: Mapping[str, Any], source: str) -> Settings:
+    problems: list[Problem] = []
+    # Without its one required section the file still gets a full report.
+    sections = convert_keys({"snapshots": {}, **tables}, Settings, problems)
+    raise_all([*problems, *broken_rules(sections)], source)
+    return Settings(**sections)
+
+
+def _merged(tables: Mapping[str, Any], over: Mapping[str, Any]) -> dict[str, Any]:
+    """`tables` with the values of `over` put into them, section by section."""
+    out = dict(tables)
+    for key, value in over.items():
+        below = out.get(key)
+        if isinstance(value, Mapping) and isinstance(below, Mapping):
+            value = _merged(below, value)
+        out[key] = value
+    return out
