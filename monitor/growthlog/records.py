@@ -299,7 +299,7 @@ class Snapshot(
     key: str
     path: str
     index: int
-    seg: int
+    seg: int = 1
     step: int | None = None
     time: float | None = None
     mtime: float = 0.0

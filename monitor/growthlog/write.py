@@ -135,10 +135,12 @@ class LogWriter:
             # record follows whole.
             line = b"\n" + self._waiting[0] if torn else self._waiting[0]
             written = os.write(file, line)
+            if written >= len(line) - 1:
+                # Where only the newline is missing, the next line brings it.
+                self._waiting.popleft()
             if written < len(line):
                 raise OSError(errno.ENOSPC, f"only {written} of {len(line)} bytes were taken")
             torn = False
-            self._waiting.popleft()
 
     def _ready(self) -> tuple[int, bool]:
         """The open file, and whether its last line is torn."""
