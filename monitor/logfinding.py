@@ -23,9 +23,9 @@ def find_log(path: Path) -> Path:
     log = path / LOG_NAME
     settings = path / SETTINGS_NAME
     if settings.is_file():
-        from monitor.config import load
+        from monitor.config import load, log_path
 
-        log = path / load(settings).run.log
+        log = log_path(load(settings), path)
     if not log.is_file():
         raise ReadError(
             "no growth log here",

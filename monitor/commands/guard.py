@@ -85,7 +85,7 @@ def settings_of(options: Namespace) -> tuple[Settings, Path, Path]:
 
     Raises SettingsError where nothing says what to watch.
     """
-    from monitor.config import from_options, load
+    from monitor.config import checked, from_options, load, log_path
 
     file = options.file
     if file is None and not options.snapshots:
@@ -97,12 +97,12 @@ def settings_of(options: Namespace) -> tuple[Settings, Path, Path]:
                 "try `stepwarden scout . --write`, or name a file or a pattern",
             )
     if file is None:
-        settings, folder = from_options(tuple(options.snapshots), (), {}), Path.cwd()
+        settings, folder = from_options(options.snapshots), Path.cwd()
     else:
         settings, folder = load(file), file.resolve().parent
-    settings = overlay(settings, options)
-    log = options.log.absolute() if options.log else folder / settings.run.log
-    return settings, folder, log
+    settings = checked(overlay(settings, options))
+    # A typed log starts from the current folder, one in the file from the file's.
+    return settings, folder, options.log.absolute() if options.log else log_path(settings, folder)
 
 
 def overlay(settings: Settings, options: Namespace) -> Settings:

@@ -94,3 +94,9 @@ def test_nothing_to_watch_is_said_with_a_way_out(here: Path) -> None:
     """Neither a file nor a pattern: the error proposes scout."""
     with pytest.raises(SettingsError, match="scout"):
         understood()
+
+
+def test_what_is_typed_obeys_the_rules_of_the_file(here: Path) -> None:
+    """A negative idle time is refused like one in the file, naming the key."""
+    with pytest.raises(SettingsError, match="idle_seconds"):
+        understood("--snapshots", "a.npy", "--idle", "-5")

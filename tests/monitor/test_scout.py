@@ -10,6 +10,7 @@ from pathlib import Path
 
 import pytest
 
+from monitor.config import load
 from monitor.proposal import describe, propose
 from monitor.scout import MOST_EXAMINED, scout
 from probes.errors import ArrivalError
@@ -151,6 +152,33 @@ def test_component_axes_are_proposed(shape: tuple[int, ...], line: str) -> None:
 
     sight = Sight(NameGroup("a.npy", ("a.npy",)), None, examined("npy", ("u", shape, "<f4")))
     assert line in propose(Scouted(Path("run"), (sight,), 1, False))
+
+
+@pytest.mark.parametrize(
+    ("names", "reply"),
+    [
+        (["out/T_1.npy", "out/T_2.npy"], examined("npy", ("T", (48, 32), "<f8"))),
+        (["u_1.npy", "u_2.npy", "v_1.npy", "v_2.npy"], examined("npy", ("u", (9, 9), "<f4"))),
+        ([f"q_{s}_p{p}.npz" for s, p in product((1, 2, 3), (0, 1))], examined("npz")),
+        (["wave.h5"], examined("hdf5", ("/a/eta", (2, 64), "<f4"), records=9, growing=True)),
+        (["T_0.10.nc", "T_0.20.nc"], examined("netcdf3", ("T", (3, 3, 3, 3), ">f4"))),
+        (["h_1.npy", "h_2.npy", "h_3.npy", "restart_1.npy"], examined("npy", ("h", (9,), "<f8"))),
+    ],
+    ids=["series", "fields", "parts", "growing", "dated", "restarts"],
+)
+def test_the_proposal_is_accepted_by_guard(
+    names: list[str], reply: Examined, tmp_path: Path
+) -> None:
+    """What scout writes loads as it stands, watches the same pattern and stops nothing."""
+    fill(tmp_path, names)
+    scouted = scout(tmp_path, answering({Path(names[0]).suffix: reply}))
+    path = tmp_path / "stepwarden.toml"
+    path.write_text(propose(scouted), encoding="utf-8")
+    settings = load(path)
+    assert scouted.snapshots is not None
+    assert settings.snapshots.pattern == (scouted.snapshots.group.pattern,)
+    assert settings.stop == ()
+    assert bool(settings.checkpoints.pattern) == ("restart_1.npy" in names)
 
 
 def test_odd_names_give_valid_toml(tmp_path: Path) -> None:
