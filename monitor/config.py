@@ -199,7 +199,8 @@ def log_path(settings: Settings, folder: Path) -> Path:
 def _settings(tables: Mapping[str, Any], source: str) -> Settings:
     problems: list[Problem] = []
     # Without its one required section the file still gets a full report.
-    sections = convert_keys({"snapshots": {}, **tables}, Settings, problems)
+    tables = {**tables, "snapshots": tables.get("snapshots", {})}
+    sections = convert_keys(tables, Settings, problems)
     raise_all([*problems, *broken_rules(sections)], source)
     return Settings(**sections)
 

@@ -158,11 +158,11 @@ def _listed_sections(
         remedy = f"write [[{keys[-1]}]] for each"
         problems.append(Problem(section_place(*keys), "must be a list of sections", remedy))
         return msgspec.UNSET
-    converted = [
+    # Unusable ones keep their place, so that the others keep their numbers in the report.
+    return tuple(
         _section(table, kind, keys, numbered_place(keys[-1], n), problems)
         for n, table in enumerate(value, 1)
-    ]
-    return tuple(section for section in converted if section is not msgspec.UNSET)
+    )
 
 
 def numbered_place(key: str, number: int) -> str:

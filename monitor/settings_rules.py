@@ -96,6 +96,8 @@ def broken_rules(sections: Mapping[str, Any]) -> Iterator[Problem]:
                 yield from _field(field, spec)
         elif name == "stop":
             for n, rung in enumerate(section, 1):
+                if rung is msgspec.UNSET:
+                    continue
                 yield from _within(rung, "stop", numbered_place("stop", n))
                 yield from _rung(rung, numbered_place("stop", n))
         else:
