@@ -137,6 +137,8 @@ def _place(kind: type[msgspec.Struct], info: msgspec.structs.FieldInfo) -> _Plac
 
 def _value(value: Any, rule: _Round, otherwise: _Otherwise) -> Any:
     if isinstance(value, float):
+        if value == 0.0 and type(value) is float:
+            return value  # a default is left out of the file only as the very same object
         if math.isfinite(value):
             return rule(float(value))
         if otherwise == "refuse":
