@@ -18,6 +18,7 @@ from __future__ import annotations
 
 import contextlib
 import errno
+import glob
 import os
 import secrets
 import socket
@@ -37,6 +38,7 @@ _PATIENCE = 0.5
 _ATTEMPTS = 5
 # Start times come from the kernel's boot time, which moves a little when the clock is set.
 _SAME_START = 2.0
+_TOKEN = 16  # hexadecimal digits
 _NO_LINKS = (errno.EPERM, errno.ENOTSUP, errno.EOPNOTSUPP, errno.ENOSYS, errno.EMLINK, errno.EXDEV)
 
 
@@ -126,17 +128,20 @@ def _acquire(log_path: Path, take_over: bool) -> Lock:
     log_path.parent.mkdir(parents=True, exist_ok=True)
     path = log_path.with_name(log_path.name + ".lock")
     process = psutil.Process()
-    owner = Owner(socket.gethostname(), process.pid, process.create_time(), secrets.token_hex(8))
+    owner = Owner(
+        socket.gethostname(), process.pid, process.create_time(), secrets.token_hex(_TOKEN // 2)
+    )
     draft = _draft(path, owner)
     try:
         for _ in range(_ATTEMPTS):
+            os.utime(draft)
             if _claim(draft, path, owner):
+                _sweep(path, draft)
                 return Lock(path, owner)
             try:
                 holder, touched = _read(path), path.stat().st_mtime
             except FileNotFoundError:
                 continue
-            os.utime(draft)
             age = draft.stat().st_mtime - touched
             if not take_over and _lives(holder, age):
                 raise SettingsError(
@@ -188,7 +193,8 @@ def _claim(draft: Path, path: Path, owner: Owner) -> bool:
     try:
         os.link(draft, path)
     except FileExistsError:
-        return False
+        # A network mount may say so of a link that it has just made for a repeated request.
+        return _read_or_none(path) == owner
     except OSError as error:
         if error.errno not in _NO_LINKS:
             raise
@@ -218,9 +224,16 @@ def _read(path: Path) -> Owner | None:
         return None
 
 
+def _read_or_none(path: Path) -> Owner | None:
+    try:
+        return _read(path)
+    except FileNotFoundError:
+        return None
+
+
 def _take_away(path: Path, judged: Owner | None) -> None:
     """Remove the lock of the owner that was judged dead, and no other."""
-    aside = path.with_name(f"{path.name}.{secrets.token_hex(8)}")
+    aside = path.with_name(f"{path.name}.{secrets.token_hex(_TOKEN // 2)}")
     try:
         os.rename(path, aside)
     except FileNotFoundError:
@@ -228,9 +241,23 @@ def _take_away(path: Path, judged: Owner | None) -> None:
     if _read(aside) != judged:
         # Somebody else was quicker, and this is the new lock: give the name back. If the name has
         # been taken in between, its new holder is the one that counts.
-        with contextlib.suppress(FileExistsError):
+        try:
             os.link(aside, path)
+        except FileExistsError:
+            pass
+        except OSError:
+            if not path.exists():
+                os.rename(aside, path)
     _remove(aside)
+
+
+def _sweep(path: Path, draft: Path) -> None:
+    """Remove what guards left that were killed while they took or gave up the lock."""
+    now = draft.stat().st_mtime
+    for other in path.parent.glob(glob.escape(path.name) + "." + "[0-9a-f]" * _TOKEN):
+        with contextlib.suppress(OSError):
+            if now - other.stat().st_mtime > STALE_SECONDS:
+                other.unlink()
 
 
 def _remove(path: Path) -> None:

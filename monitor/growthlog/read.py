@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import os
-from collections.abc import Callable
+from collections.abc import Callable, Iterator
 from dataclasses import dataclass
 from pathlib import Path
 
@@ -51,16 +51,19 @@ def decode(line: bytes) -> AnyRecord:
 class Lines:
     """Cuts a stream of bytes, in whatever pieces it comes, into records.
 
-    bad: complete lines so far that are no known record. rest: the incomplete last line.
+    size: bytes so far. bad: complete lines so far that are no known record. rest: the incomplete
+    last line.
     """
 
     def __init__(self) -> None:
+        self.size = 0
         self.bad = 0
         self.rest = b""
         self._skipping = False
 
     def feed(self, piece: bytes) -> list[AnyRecord]:
         """Records whose lines are complete with `piece`."""
+        self.size += len(piece)
         whole, newline, rest = piece.rpartition(b"\n")
         if not newline:
             self._keep(self.rest + piece)
@@ -72,6 +75,15 @@ class Lines:
         self.rest = b""
         self._keep(rest)
         return self._records(lines)
+
+    def finish(self) -> list[AnyRecord]:
+        """At the end of the stream: the record of a last line that only lacks its newline."""
+        try:
+            last = [decode(self.rest)]
+        except BadLine:
+            return []
+        self.rest = b""
+        return last
 
     def _keep(self, rest: bytes) -> None:
         if self._skipping:
@@ -93,31 +105,34 @@ class Lines:
         return records
 
 
-def read_log(path: Path, progress: Callable[[int, int], None] | None = None) -> LogContents:
-    """All records of the log at `path`.
+def each_record(
+    path: Path, lines: Lines | None = None, progress: Callable[[int, int], None] | None = None
+) -> Iterator[AnyRecord]:
+    """The records of the log at `path` one after the other, for whoever must not hold them all (a
+    record takes about 3 kB of memory).
 
-    progress: called now and then with (bytes read, bytes in all). A last line without newline
-    counts as a record if it is whole. Raises ReadError where the file cannot be read at all.
+    lines: tells afterwards what else was in the file. progress: called now and then with (bytes
+    read, bytes in all). A last line without newline counts as a record if it is whole. Raises
+    ReadError where the file cannot be read at all.
     """
-    lines, records, size = Lines(), list[AnyRecord](), 0
+    lines = Lines() if lines is None else lines
     try:
         with path.open("rb", buffering=0) as file:
             total = os.fstat(file.fileno()).st_size
             while piece := file.read(_BLOCK):
-                size += len(piece)
-                records += lines.feed(piece)
+                yield from lines.feed(piece)
                 if progress is not None:
-                    progress(size, max(total, size))
+                    progress(lines.size, max(total, lines.size))
     except FileNotFoundError as error:
         remedy = "guard writes it; start that first, or name another log"
         raise ReadError("there is no growth log", str(path), remedy) from error
     except OSError as error:
         raise ReadError(f"the growth log cannot be read ({error.strerror})", str(path)) from error
-    torn = bool(lines.rest.strip())
-    if torn:
-        try:
-            records.append(decode(lines.rest))
-            torn = False
-        except BadLine:
-            pass
-    return LogContents(records, lines.bad, torn, size)
+    yield from lines.finish()
+
+
+def read_log(path: Path, progress: Callable[[int, int], None] | None = None) -> LogContents:
+    """All records of the log at `path`; arguments and errors as for `each_record`."""
+    lines = Lines()
+    records = list(each_record(path, lines, progress))
+    return LogContents(records, lines.bad, torn=bool(lines.rest.strip()), size=lines.size)

@@ -212,6 +212,35 @@ def test_a_folder_is_made_and_one_that_cannot_be_is_told(tmp_path: Path) -> None
         Lock.acquire(tmp_path / "file" / "growth.jsonl")
 
 
+def test_what_killed_guards_left_is_swept(log: Path) -> None:
+    """Drafts of guards that were killed while they took the lock go after a while; nothing else
+    that begins alike does."""
+    old = log.with_name("growth.jsonl.lock.0123456789abcdef")
+    young = log.with_name("growth.jsonl.lock.0123456789abcde0")
+    foreign = log.with_name("growth.jsonl.lock.keep")
+    for path in (old, young, foreign):
+        path.touch()
+    for path in (old, foreign):
+        os.utime(path, (1000.0, 1000.0))
+    Lock.acquire(log).release()
+    assert leftovers(log) == sorted([young.name, foreign.name])
+
+
+def test_a_link_that_was_made_and_denied(log: Path, monkeypatch: pytest.MonkeyPatch) -> None:
+    """A network mount repeats a request and answers that the name exists: it is our own."""
+    link = os.link
+
+    def repeated(source: Path, target: Path) -> None:
+        link(source, target)
+        raise FileExistsError(errno.EEXIST, "File exists")
+
+    monkeypatch.setattr(os, "link", repeated)
+    lock = Lock.acquire(log)
+    assert lock.held()
+    lock.release()
+    assert leftovers(log) == []
+
+
 def test_without_hard_links(log: Path, monkeypatch: pytest.MonkeyPatch) -> None:
     """Some file systems have none; exclusive creation does there."""
 
