@@ -257,7 +257,9 @@ def summarise(contents: LogContents) -> Review:
         told=told,
         turn=turn,
         condition=snaps[-1].verdict.condition if snaps else "gathering",
-        growth=best_growth(snaps, turn) if turn else _or_unknown(told and told.verdict.factor),
+        growth=best_growth(snaps, turn)
+        if turn
+        else _or_unknown(told.verdict.factor if told else None),
         region=find_region(heads.get(number), snaps, turn),
         clean=clean,
         later=loose[-1] if clean and loose and loose[-1].step > clean.step else None,

@@ -117,9 +117,9 @@ def scout(path: Path, ask: Callable[[Request], Reply]) -> Scouted:
 def _list(folder: Path) -> tuple[dict[str, float], bool]:
     """Names relative to `folder` with their times of change; True if there were too many."""
     times: dict[str, float] = {}
-    todo = [(folder, 0)]
-    while todo:
-        here, depth = todo.pop(0)
+    ahead = [(folder, 0)]
+    while ahead:
+        here, depth = ahead.pop(0)
         try:
             with os.scandir(here) as entries:
                 found = sorted(entries, key=lambda entry: entry.name)
@@ -134,7 +134,7 @@ def _list(folder: Path) -> tuple[dict[str, float], bool]:
             try:
                 if entry.is_dir():
                     if depth < DEEPEST and name not in _OWN_FOLDERS:
-                        todo.append((Path(entry.path), depth + 1))
+                        ahead.append((Path(entry.path), depth + 1))
                 elif not name.endswith(_IGNORED_SUFFIXES):
                     times[str(PurePosixPath(Path(entry.path).relative_to(folder)))] = (
                         entry.stat().st_mtime
