@@ -86,7 +86,7 @@ def headline(story: Story, now: float) -> str:
         value = factor_text(Estimate(verdict.factor.value))
         what = f" in {verdict.field}" if verdict.field else ""
         parts.append(f"{value} per {story.per}{what}")
-    if stretch.since is not None and stretch.since is not last:
+    if stretch.since is not None:
         at = stretch.since.at
         when = moment_text(at, now) if over(story) else age_text(now - at)
         parts.append(f"since {place_text(stretch.since)}, {when}")

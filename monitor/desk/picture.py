@@ -24,6 +24,7 @@ from monitor.desk.messages import Arrived, GuardSeen
 from monitor.desk.source import Post
 from monitor.growthlog.read import read_log
 from monitor.growthlog.records import AnyRecord, Opened, Snapshot
+from monitor.wording import clean
 
 # Size of a cell and of the letters in it, in pixels.
 CELL_WIDTH, CELL_HEIGHT, FONT_SIZE, MARGIN = 8.4, 18.0, 14.0, 14.0
@@ -225,7 +226,7 @@ def main(words: Sequence[str] | None = None) -> int:
     keys = options.keys.split()
     strips = asyncio.run(strips_of(records, int(columns), int(rows), keys, options.plain))
     name = next((r.run for r in records if isinstance(r, Opened)), "run")
-    options.out.write_text(svg(strips, f"The desk of stepwarden on the run {name}"), "utf-8")
+    options.out.write_text(svg(strips, f"The desk of stepwarden on the run {clean(name)}"), "utf-8")
     return 0
 
 

@@ -28,7 +28,7 @@ class GrowthPart(CurvePart):
     def facts(self, scene: Scene, stretch: Stretch, curves: list[Curve]) -> list[tuple[str, str]]:
         bulk, ripple = curves
         return [
-            (f"of {scene.field} per {scene.story.per}", ""),
+            (f"of {scene.which_field} per {scene.story.per}", ""),
             (f"ripple {_latest(ripple.values)}", "ripple"),
             (f"bulk {_latest(bulk.values)}", "bulk"),
         ]

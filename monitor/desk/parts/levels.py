@@ -30,7 +30,7 @@ class LevelsPart(CurvePart):
 
     def facts(self, scene: Scene, stretch: Stretch, curves: list[Curve]) -> list[tuple[str, str]]:
         return [
-            (f"of {scene.field}", ""),
+            (f"of {scene.which_field}", ""),
             ("ripple", "ripple"),
             ("bulk", "bulk"),
             ("field", "size"),

@@ -25,6 +25,14 @@ class Scene:
     glyphs: Glyphs
     field: str = ""
 
+    @property
+    def which_field(self) -> str:
+        """The field's name, and which of how many it is."""
+        names = self.story.now.series.fields if self.story.now else []
+        if len(names) < 2 or self.field not in names:
+            return self.field
+        return f"{self.field} ({names.index(self.field) + 1} of {len(names)})"
+
 
 class Part(ABC):
     """One part. It remembers what must not change from drawing to drawing (axes, scrolling), and

@@ -4,7 +4,7 @@ from __future__ import annotations
 
 from textwrap import wrap
 
-from monitor.desk.advice import Row, headline, rows
+from monitor.desk.advice import Row, headline, over, rows, stalled
 from monitor.desk.parts.part import Part, Scene
 from monitor.desk.sheet import Sheet
 from monitor.wording import condition_sign
@@ -38,6 +38,10 @@ class VerdictPart(Part):
         sign = condition_sign(condition, ascii=scene.glyphs.plain)
         style = f"banner-{condition}"
         x = sheet.write(0, 0, f" {sign} {condition.upper()} ", style)
+        if stalled(scene.story):
+            x = sheet.write(x, 0, " STALLED ", "banner-swelling")
+        if scene.health.guard is False and not over(scene.story):
+            x = sheet.write(x, 0, " UNWATCHED ", "banner-swelling")
         name = sheet.told(scene.story.run)
         room = max(0, min(len(name), (sheet.width - x) // 3))
         x = sheet.write(

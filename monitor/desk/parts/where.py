@@ -59,13 +59,12 @@ class WherePart(Part):
 
     def _map(self, sheet: Sheet, record: TileMap, plane: tilemap.Array, top: float) -> int:
         """Draw the plane and its ramp; returns the rows used."""
-        lines = 1 + (_WORST_ROWS if sheet.height > 12 else 0)
-        room = max(1, sheet.height - 1 - lines)
+        room = max(1, sheet.height - 3)
         pool = tilemap.pooled(plane, room, max(1, sheet.width - 2))
         steps = tilemap.ramp_steps(pool, top, len(RAMP))
         # Cells of a terminal are about twice as high as wide.
-        tall = max(1, min(3, room // len(pool), (sheet.width - 2) // (2 * pool.shape[1])))
-        wide = max(1, min(2 * tall, (sheet.width - 2) // pool.shape[1]))
+        tall: int = max(1, min(3, room // len(pool), (sheet.width - 2) // (2 * pool.shape[1])))
+        wide: int = max(1, min(2 * tall, (sheet.width - 2) // pool.shape[1]))
         for row, line in enumerate(steps):
             for column, step in enumerate(line):
                 character = "?" if step < 0 else RAMP[step]
@@ -75,11 +74,13 @@ class WherePart(Part):
                         at = 1 + row * tall + y, 1 + column * wide + x
                         sheet.put(at[1], at[0], character, style)
         y = 1 + len(steps) * tall
+        # The ramp would look like another row of the map.
+        y += y < sheet.height - 1
         x = sheet.write(1, y, "x1 ", "dim")
         for step, character in enumerate(RAMP):
             sheet.put(x + step, y, character, f"heat{step}")
         sheet.write(x + len(RAMP) + 1, y, f"x{number(math.exp(top), 3)} per snapshot", "dim")
-        return 1 + len(pool) * tall
+        return y
 
     def _worst(self, sheet: Sheet, scene: Scene, y: int) -> None:
         last = scene.story.last
