@@ -57,6 +57,7 @@ class Opened(Record, frozen=True, kw_only=True, tag="opened"):
 
     settings: the whole configuration in force, as decoded. versions: of packages that matter.
     continues: True when an earlier guard's window was taken up without a gap; note says why not.
+    process: number, start time (seconds since the epoch) and owner of the solver's process.
     """
 
     schema: int = SCHEMA
@@ -67,6 +68,7 @@ class Opened(Record, frozen=True, kw_only=True, tag="opened"):
     pid: int
     continues: bool = False
     note: str = ""
+    process: tuple[int, float, int] | None = None
 
 
 class Segment(Record, frozen=True, kw_only=True, tag="segment"):
