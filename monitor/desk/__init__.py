@@ -25,7 +25,7 @@ def run(
         from monitor.desk.plain import follow
 
         return follow(log)
-    plain_characters = ascii or not terminal.speaks_utf8(os.environ)
+    plain_characters = ascii or not terminal.speaks_utf8(terminal.given_environment())
     terminal.prepare_environment()
     from monitor.desk.app import DeskApp
     from monitor.desk.source import Source

@@ -31,6 +31,8 @@ def arrange(width: int, height: int, chosen: str, alone: bool) -> dict[str, Plac
     where only one is; alone: show only that one although there is room.
     """
     small = folded(width, height)
+    if height < 2:
+        return {VERDICT: (0, 0, width, height)}
     top = min(VERDICT_HEIGHT + (not small), max(1, height - 2))
     room = height - top - 1
     places = {VERDICT: (0, 0, width, top), KEYS: (0, height - 1, width, 1)}

@@ -8,7 +8,7 @@ from collections.abc import Callable
 from pathlib import Path
 
 from monitor.desk.advice import Health, headline, rows
-from monitor.desk.source import POLL_SECONDS, guard_alive
+from monitor.desk.lookout import POLL_SECONDS, guard_alive
 from monitor.desk.story import Story
 from monitor.exits import Exit
 from monitor.growthlog.follow import Follower

@@ -11,27 +11,16 @@ from typing import Protocol
 
 from textual.message import Message
 
+from monitor.desk.lookout import POLL_SECONDS, guard_alive
 from monitor.desk.messages import Arrived, GuardSeen, LogTrouble
 from monitor.growthlog.follow import Follower
-from monitor.growthlog.lock import STALE_SECONDS, TOUCH_SECONDS
 from probes.errors import StepwardenError
 
-POLL_SECONDS = 0.5
 # One piece of a long log: folded in well under a tenth of a second, so that keys stay quick.
 PIECE = 1 << 20
 # Pieces that may wait for the screen; more would only fill memory.
 _WAITING = 2
 _LOOK_AT_LOCK_SECONDS = 5.0
-
-
-def guard_alive(log: Path, now: float) -> bool:
-    """Whether the log's lock is there and was touched lately. From the file's time alone, so that
-    it holds for a guard on any host."""
-    try:
-        touched = log.with_name(f"{log.name}.lock").stat().st_mtime
-    except OSError:
-        return False
-    return now - touched < STALE_SECONDS + TOUCH_SECONDS
 
 
 Post = Callable[[Message], object]

@@ -12,6 +12,7 @@ import sys
 import termios
 import threading
 from collections.abc import Iterator, Mapping
+from pathlib import Path
 from typing import Any
 
 # Signals on which the desk leaves as if asked to, with status 128 + n.
@@ -37,27 +38,32 @@ def _streams() -> tuple[Any, ...]:
     return sys.__stdin__, sys.__stdout__, sys.__stderr__
 
 
-def speaks_utf8(environment: Mapping[str, str]) -> bool:
-    """The locale says that the terminal shows UTF-8.
+def given_environment() -> Mapping[str, str]:
+    """The environment that the process was started with.
 
-    Python calls its own encoding UTF-8 even in the C locale, so the environment is asked first.
+    In the C locale Python sets LC_CTYPE to UTF-8 for itself (PEP 538), which says nothing of the
+    terminal; the kernel still has what was there before.
     """
-    for name in ("LC_ALL", "LC_CTYPE", "LANG"):
-        value = environment.get(name, "")
-        if value:
-            _, _, encoding = value.partition(".")
-            if not encoding:
-                break
-            with contextlib.suppress(LookupError):
-                return codecs.lookup(encoding.partition("@")[0]).name == "utf-8"
-            return False
-    else:
+    try:
+        block = Path("/proc/self/environ").read_bytes()
+    except OSError:
+        return os.environ
+    pairs = (os.fsdecode(entry).partition("=") for entry in block.split(b"\0") if entry)
+    return {name: value for name, _, value in pairs}
+
+
+def speaks_utf8(environment: Mapping[str, str]) -> bool:
+    """The locale says that the terminal shows UTF-8."""
+    names = ("LC_ALL", "LC_CTYPE", "LANG")
+    value = next((environment[name] for name in names if environment.get(name)), "C")
+    encoding = value.partition(".")[2].partition("@")[0]
+    if not encoding and value not in ("C", "POSIX"):
+        # "de_DE": the system knows which encoding that means.
+        encoding = locale.getpreferredencoding(False)
+    try:
+        return codecs.lookup(encoding or "ascii").name == "utf-8"
+    except LookupError:
         return False
-    if value in ("C", "POSIX"):
-        return False
-    with contextlib.suppress(LookupError):
-        return codecs.lookup(locale.getpreferredencoding(False)).name == "utf-8"
-    return False
 
 
 def prepare_environment() -> None:
