@@ -13,7 +13,7 @@ import msgspec
 
 from monitor.config import StopStep
 from monitor.desk import telling
-from monitor.desk.story import Deed, Story, Stretch
+from monitor.desk.story import STOPPING, Deed, Story, Stretch
 from monitor.growthlog.records import Condition, Estimate, Evidence, Snapshot
 from monitor.wording import (
     age_text,
@@ -27,8 +27,6 @@ from monitor.wording import (
     place_text,
     verdict_text,
 )
-
-STOPPING = ("stop-file", "command", "signal", "kill")
 
 # ln of the ratio of a field to its round-off in double precision: how far a growth has to go. To
 # foretell ruin at least three snapshots must fall into that time.

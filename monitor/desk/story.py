@@ -32,6 +32,9 @@ from monitor.growthlog.records import (
 from monitor.lastclean import CleanSnapshot
 from monitor.wording import place_text
 
+# Acts of the stop ladder.
+STOPPING = ("stop-file", "command", "signal", "kill")
+
 _EVENTS = 1000
 _ARRIVALS = 400
 
@@ -83,7 +86,8 @@ class Stretch:
 class Story:
     """Facts for the screen. `take` records in file order; everything else only reads.
 
-    maps: the latest of each field, with the place in the run that it was made at.
+    maps: the latest of each field, with the place in the run that it was made at. deeds: of the
+    present segment, by act and request.
     """
 
     def __init__(self) -> None:
@@ -92,7 +96,7 @@ class Story:
         self.pulse: PulseChange | None = None
         self.closed: Closed | None = None
         self.pins: dict[str, PinRecord] = {}
-        self.deeds: dict[str, Deed] = {}
+        self.deeds: dict[tuple[str, str], Deed] = {}
         self.maps: dict[str, tuple[TileMap, str]] = {}
         self.closeup: CloseUp | None = None
         self.events: deque[Event] = deque(maxlen=_EVENTS)
@@ -176,6 +180,7 @@ class Story:
                     stretch.checkpoints.pinned(held)
                 self.stretches.append(stretch)
                 self.maps.clear()
+                self.deeds.clear()
                 self.closeup = self.pulse = None
                 if record.why != "start":
                     self._event(record.at, "swelling", telling.segment(record))
@@ -187,8 +192,8 @@ class Story:
             case PinRecord():
                 self._pin(record)
             case Intent():
-                self.deeds[record.id] = Deed(record)
-                if record.act != "pin":
+                self.deeds[record.act, record.id] = Deed(record)
+                if record.act in STOPPING:
                     self._event(record.at, "swelling", telling.intent(record))
             case Outcome():
                 self._outcome(record)
@@ -215,10 +220,11 @@ class Story:
             self._event(pin.at, "good" if pin.verified else "swelling", telling.pin(pin))
 
     def _outcome(self, outcome: Outcome) -> None:
-        deed = self.deeds.get(outcome.id)
+        deed = self.deeds.get((outcome.act, outcome.id))
         if deed is not None:
             deed.outcome = outcome
-        if outcome.act != "pin" or outcome.outcome == "failed":
+        # Pins have records of their own, and a notice that was given is no news.
+        if outcome.act not in ("pin", "notify") or outcome.outcome == "failed":
             bad = outcome.outcome in ("failed", "no-reaction")
             self._event(outcome.at, "runaway" if bad else "good", telling.outcome(outcome))
 

@@ -13,7 +13,7 @@ from textual.binding import Binding
 from textual.screen import Screen
 
 from monitor.desk.advice import Health
-from monitor.desk.arranging import KEYS, VERDICT, arrange, folded
+from monitor.desk.arranging import KEYS, VERDICT, Place, arrange, folded
 from monitor.desk.glyphs import glyphs_for
 from monitor.desk.messages import Arrived, GuardSeen, LogTrouble
 from monitor.desk.parts.growth import GrowthPart
@@ -72,6 +72,7 @@ class RunScreen(Screen[None]):
         self.alone = False
         self._field = ""
         self._drawn = 0.0
+        self._places: dict[str, Place] = {}
 
     def compose(self) -> ComposeResult:
         yield from self._views.values()
@@ -143,6 +144,10 @@ class RunScreen(Screen[None]):
         # The verdict is always there: with it chosen, the first part keeps its place below.
         below = self._order[0] if self.chosen == VERDICT else self.chosen
         places = arrange(*self.size, below, self.alone)
+        if places == self._places:
+            self.draw()
+            return
+        self._places = places
         for key, view in (*self._views.items(), (KEYS, self._foot)):
             place = places.get(key)
             view.display = place is not None

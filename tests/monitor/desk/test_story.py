@@ -4,7 +4,15 @@ from __future__ import annotations
 
 import pytest
 
-from monitor.growthlog.records import Closed, Opened, PinRecord, PulseChange, Snapshot
+from monitor.growthlog.records import (
+    Closed,
+    Intent,
+    Opened,
+    Outcome,
+    PinRecord,
+    PulseChange,
+    Snapshot,
+)
 from monitor.lastclean import clean_pins
 from monitor.review import summarise
 from tests.monitor.desk.conftest import story_of
@@ -94,6 +102,29 @@ def test_a_restart_begins_a_new_stretch_and_remembers_the_alarm() -> None:
     assert len(story.now.series) == 1  # type: ignore[union-attr]
     assert story.stretches[0].alarm is not None
     assert story.maps == {}
+
+
+def test_acts_of_an_earlier_segment_are_over() -> None:
+    """What was done about segment 1 is an event, and no deed of segment 2."""
+    made = stopped()
+    assert len(story_of(made).deeds) == 1
+    made.segment(2, "restart", 1800)
+    story = story_of(made)
+    assert story.deeds == {}
+    assert any("stop file" in event.text for event in story.events)
+
+
+def test_a_notice_is_told_only_if_it_failed() -> None:
+    """A mail that went out is no news on the screen; one that did not is."""
+    made = healthy(10)
+    made.add(Intent, act="notify", id="n1", target="./tell-me.sh")
+    made.add(Outcome, act="notify", id="n1", outcome="done")
+    before = len(story_of(made).events)
+    made.add(Intent, act="notify", id="n2", target="./tell-me.sh")
+    made.add(Outcome, act="notify", id="n2", outcome="failed", detail="status 1")
+    events = story_of(made).events
+    assert len(events) == before + 1
+    assert events[-1].text == "notify command: failed, status 1"
 
 
 def test_a_guard_that_takes_up_the_log_again_opens_it() -> None:
