@@ -31,6 +31,8 @@ from probes.spec import FieldSpec
 _KEPT = 512
 # A level has to stand this far above its rounding floor (in ln) to count.
 OVER_FLOOR = math.log(6.0)
+# A pair has to make up this much of the ripple of the last difference.
+SHARE = 0.15
 # Longest wavelength, in cells, up to which growth is suspicious though not damning.
 _DOUBTFUL_CELLS = 6.5
 _DOUBLE_LARGEST = 709.78
@@ -242,9 +244,10 @@ def _lines(
     over = y > floor + OVER_FLOOR
     if not over[-1]:
         return []
-    recent = [c for c in s.cells[-3:] if c is not None]
-    cells = float(np.median(recent)) if recent else None
-    short = cells is not None and max(recent) <= alarm.cells
+    recent = _cells_of_last_decade(y, s.cells[-tail:])
+    cells = float(np.median(recent[-3:])) if recent else None
+    # A front that steepens gets shorter while it rises; an amplified error keeps its wavelength.
+    short = cells is not None and max(recent) <= min(alarm.cells, 1.3 * min(recent))
     doubtful = cells is not None and cells <= _DOUBTFUL_CELLS
     spec = fields.get(name.split("[")[0])
     unit = "step"
@@ -276,6 +279,14 @@ def _lines(
             factor, cells, onset,
         )
     ]
+
+
+def _cells_of_last_decade(y: np.ndarray, cells: tuple[float | None, ...]) -> list[float]:
+    """Wavelengths of the latest snapshots, back to where the level was ten times lower (3 at least
+    where there are as many)."""
+    lower = np.flatnonzero(y <= y[-1] - math.log(10.0))
+    first = min(int(lower[-1]) if lower.size else 0, len(y) - 3)
+    return [c for c in cells[max(0, first) :] if c is not None]
 
 
 def _factor(slope: float, error: float) -> Estimate:
@@ -324,29 +335,38 @@ def _tile_line(evidence: Evidence, alarm: AlarmSection, x: float) -> list[Findin
 def _modes(
     evidence: Evidence, alarm: AlarmSection, fields: Mapping[str, FieldSpec], x: float
 ) -> list[Finding]:
-    """Ritz pairs that persist between windows."""
+    """Ritz pairs that persist between windows and grow as their factor foretells."""
     out = []
     for m in evidence.modes:
         if m.held < alarm.held:
             continue
-        short = m.cells is not None and m.cells <= alarm.cells
-        if m.view == "bulk" and not m.odd:
-            short = False
-        spec = fields.get(m.f.split("[")[0])
-        expected = _expected(math.log(m.factor), evidence, spec)
+        off = abs(m.gain - m.foretold)
+        true_to_rate = off <= 0.1 + 0.05 * m.foretold
+        enough = m.grown >= math.log(10.0) or (m.foretold >= 1.0 and m.held > alarm.held)
+        short = m.cells is not None and m.cells <= alarm.mode_cells
+        odd = m.odd and off <= max(0.15, 0.5 * m.foretold) and m.foretold > 0.2
+        # Products of a resolved growth (its harmonics) are shorter and grow faster than it does.
+        carried = m.share < 0.3 and any(
+            o.f == m.f and o.view == m.view and o.share > m.share and 1.0 < o.factor < m.factor
+            and (o.cells is None or o.cells > _DOUBTFUL_CELLS)
+            for o in evidence.modes
+        )
+        # In the bulk the little ripple of a pair may be another's: its wavelength proves nothing.
+        short = short and m.view == "ripple" and m.share >= SHARE and not carried
+        expected = _expected(math.log(m.factor), evidence, fields.get(m.f.split("[")[0]))
         factor = Estimate(m.factor, m.low, m.high, 0.9)
         what = (
             f"{m.f}: a mode persists over {m.held} snapshots and grows {m.factor:.5g} per step"
             + (f", {m.cells:.1f} cells long" if m.cells is not None else "")
         )
-        if (short or m.odd) and not expected:
-            if m.odd and not short:
-                what += ", alternating in sign from step to step"
+        if odd:
+            what += ", alternating in sign from one snapshot to the next"
+        if ((short and true_to_rate and enough) or odd) and not expected:
             out.append(
                 Finding("runaway", "numerical", m.f, what, 100.0 + m.held, factor, m.cells,
                         _mode_onset(m, evidence, x))
             )
-        else:
+        elif true_to_rate and enough:
             out.append(Finding("quiet", "resolved", m.f, what, 1.0, factor, m.cells))
     return out
 

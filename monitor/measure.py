@@ -52,10 +52,15 @@ def _num(value: float) -> Num:
 class _Tracked:
     """A Ritz vector of one snapshot, kept until it can be compared with a later one."""
 
-    index: int
     value: complex
     size: float
-    basis: Array
+    basis: NDArray[np.float32]
+    match: float = 0.0
+    gain: float = 0.0
+    foretold: float = 0.0
+    kept: bool = False
+    held: int = 0
+    grown: float = 0.0
 
 
 @dataclass
@@ -78,8 +83,7 @@ class _Channel:
     exponents: deque[int] = field(default_factory=deque)
     tile_levels: deque[Array] = field(default_factory=deque)
     tile_floors: deque[Array] = field(default_factory=deque)
-    tracks: dict[str, deque[_Tracked | None]] = field(default_factory=dict)
-    held: dict[str, int] = field(default_factory=dict)
+    tracks: dict[str, deque[list[_Tracked]]] = field(default_factory=dict)
 
     @property
     def tiles(self) -> int:
@@ -199,7 +203,7 @@ class Measurer:
             dt=dt,
             uneven=uneven,
             fresh=self._index + 1,
-            modes=tuple(m for r in readings for m in r.modes)[:4],
+            modes=tuple(sorted((m for r in readings for m in r.modes), key=lambda m: -m.held)[:4]),
             line=leading.line if leading is not None else None,
             worst=worst,
             edges=edges,
@@ -260,7 +264,7 @@ class Measurer:
             floor_sum += floors**2 * positions[:, groups[f"r8.{a}"]]
         totals = {
             order: np.sum([positions[:, groups[f"r{order}.{a}"]] for a in axes], axis=0)
-            for order in (4, 8)
+            for order in (8,)
         }
         vary = self._variation(now, layouts, positions, blocks) * math.exp(0.0)
         low = min(b.low for b in blocks)
@@ -333,7 +337,6 @@ class Measurer:
             channel.tile_floors.popleft()
         if uneven:
             channel.tracks.clear()
-            channel.held.clear()
             return
         if gridded:
             reading.line = self._tile_line(reading, groups, per_tile)
@@ -379,7 +382,7 @@ class Measurer:
         high = [pooled[f"r8.{a}"] for a in axes]
         strongest = max(high, default=0.0)
         return tuple(
-            growth.half_angle(pooled[f"r4.{a}"], h, 4, 8)
+            growth.half_angle(pooled[f"r6.{a}"], h, 6, 8)
             if h > limit and h > 0.05 * strongest
             else 0.0
             for a, h in zip(axes, high, strict=True)
@@ -422,7 +425,7 @@ class Measurer:
         channel = reading.channel
         if len(channel.differences) < 3:
             return []
-        views = {"ripple": ("r8",), "fine": ("r4", "edge"), "bulk": ("bulk",)}
+        views = {"ripple": ("r8",), "fine": ("r6", "edge"), "bulk": ("bulk",)}
         if not gridded:
             views = {"bulk": ("bulk",)}
         out = []
@@ -430,13 +433,11 @@ class Measurer:
         for view, kinds in views.items():
             vectors = self._vectors(channel, kinds)
             exponent = max(channel.exponents)
-            mode = self._track(
+            out += self._track(
                 reading, view, vectors, math.ldexp(noise, -exponent), exponent, positions, groups,
                 stride,
             )
-            if mode is not None:
-                out.append(mode)
-        return out
+        return sorted(out, key=lambda m: (-m.held, -m.factor))
 
     def _vectors(self, channel: _Channel, kinds: tuple[str, ...] | None) -> Array:
         """(numbers, differences): weighted columns of some groups, in one scale."""
@@ -456,50 +457,69 @@ class Measurer:
     def _track(
         self, reading: _Reading, view: str, vectors: Array, noise: float, exponent: int,
         positions: Array, groups: dict[str, int], stride: int | None,
-    ) -> Mode | None:
-        channel = reading.channel
-        r = self._krylov
-        track = channel.tracks.setdefault(view, deque(maxlen=r + 1))
-        pairs = modes.ritz_pairs(vectors, noise)
+    ) -> list[Mode]:
+        channel, r = reading.channel, self._krylov
+        track = channel.tracks.setdefault(view, deque(maxlen=r))
         rising = [
-            p for p in pairs
+            p for p in modes.ritz_pairs(vectors, noise)
             if abs(p.value) > 1.0 and p.size > 3.0 * noise and p.residual < 0.5 and p.share > 1e-8
         ]
-        if not rising:
-            track.append(None)
-            channel.held[view] = 0
-            return None
-        pair = max(rising, key=lambda p: p.size)
-        basis = pair.vectors(vectors)
-        now = _Tracked(self._index, pair.value, pair.size * 2.0**exponent if exponent < 900 else
-                       math.inf, basis.astype(np.float32).astype(np.float64))
-        match, gain, foretold = 0.0, 0.0, 0.0
-        old = track[-r] if len(track) >= r else None
-        if old is not None and old.basis.shape[0] == basis.shape[0]:
-            match = modes.likeness(old.basis, basis)
-            apart = now.index - old.index
-            gain = math.log(now.size / old.size) if old.size > 0 else 0.0
-            foretold = apart * math.log(abs(pair.value))
-            steady = abs(math.log(abs(old.value)) / math.log(abs(pair.value)) - 1.0) < 0.15
-            kept = match > 0.9 and steady and abs(gain - foretold) < 0.3 + 0.05 * abs(foretold)
-            if kept:
-                channel.held[view] = max(channel.held.get(view, 0) + 1, r)
-            else:
-                channel.held[view] = 0
+        # The largest is not always the one that grows: keep the fastest as well.
+        chosen = sorted(rising, key=lambda p: -p.size)[:2]
+        fastest = sorted(rising, key=lambda p: -abs(p.value))[:2]
+        chosen += [p for p in fastest if p not in chosen]
+        now, out = [], []
+        for pair in chosen:
+            size = math.log(pair.size) + exponent * math.log(2.0)
+            here = _Tracked(pair.value, size, pair.vectors(vectors).astype(np.float32))
+            self._compare(here, track, r)
+            now.append(here)
+            out.append(self._mode(reading, view, pair, here, vectors, groups, positions, exponent, stride))
         track.append(now)
+        return out
+
+    @staticmethod
+    def _compare(here: _Tracked, track: deque[list[_Tracked]], r: int) -> None:
+        """Look for the same pair one window earlier, and take up its history of one snapshot ago."""
+        if len(track) < r:
+            return
+        growth_now = math.log(abs(here.value))
+        for old in track[-r]:
+            if old.basis.shape[0] != here.basis.shape[0]:
+                continue
+            steady = abs(math.log(abs(old.value)) / growth_now - 1.0) < 0.15
+            likeness = modes.likeness(old.basis.astype(float), here.basis.astype(float))
+            if likeness > here.match and (steady or here.match == 0.0):
+                here.match, here.gain, here.foretold = likeness, here.size - old.size, r * growth_now
+                off = abs(here.gain - here.foretold)
+                here.kept = steady and likeness > 0.9 and off <= 0.15 + 0.1 * here.foretold
+        if not here.kept:
+            return
+        here.held, here.grown = r, here.gain
+        for old in track[-1]:
+            near = abs(math.log(abs(old.value)) / growth_now - 1.0) < 0.15
+            if near and old.held and old.held + 1 > here.held:
+                here.held, here.grown = old.held + 1, old.grown + here.size - old.size
+
+    def _mode(
+        self, reading: _Reading, view: str, pair: modes.RitzPair, here: _Tracked, vectors: Array,
+        groups: dict[str, int], positions: Array, exponent: int, stride: int | None,
+    ) -> Mode:
         per_step = stride or 1
-        factor = abs(pair.value) ** (1.0 / per_step)
+        size = abs(pair.value)
         doubt = max(pair.residual, 1e-4)
-        low = max(abs(pair.value) - doubt, 1e-300) ** (1.0 / per_step)
-        high = (abs(pair.value) + doubt) ** (1.0 / per_step)
         cells, angles, amplitude = self._mode_shape(reading, pair, groups, positions, exponent)
-        real_negative = pair.value.real < 0 and abs(pair.value.imag) < 0.1 * abs(pair.value)
+        negative = pair.value.real < 0.0 and abs(pair.value.imag) <= 1e-9 * size
+        nearly = pair.value.real < 0.0 and abs(pair.value.imag) < 0.1 * size and per_step == 1
         return Mode(
-            f=channel.name, re=pair.value.real, im=pair.value.imag, factor=factor, low=low,
-            high=high, residual=pair.residual, span=vectors.shape[1],
+            f=reading.channel.name, re=pair.value.real, im=pair.value.imag,
+            factor=size ** (1.0 / per_step),
+            low=max(size - doubt, 1e-300) ** (1.0 / per_step),
+            high=(size + doubt) ** (1.0 / per_step),
+            residual=pair.residual, share=pair.share, span=vectors.shape[1],
             view="bulk" if view == "bulk" else "ripple", cells=cells, axes=angles,
-            held=channel.held.get(view, 0), match=match, gain=gain, foretold=foretold,
-            amp=amplitude, odd=bool(real_negative and per_step == 1),
+            held=here.held, match=here.match, gain=here.gain, foretold=here.foretold,
+            grown=here.grown, amp=amplitude, odd=bool(nearly or (negative and per_step % 2 == 1)),
         )
 
     def _mode_shape(
@@ -527,14 +547,17 @@ class Measurer:
         per_tile = np.hypot(full[0], full[1])
         axes = range(len(channel.blocks[0].layout.tiling.shape))
         pooled = {n: growth.pool(per_tile[:, g], positions[:, g]) for n, g in groups.items()}
-        angles = self._angles(pooled, None, 0.0, axes)
+        # Rounding noise of every difference enters with its weight.
+        floor = reading.record.floor
+        noise = floor + math.log(float(np.linalg.norm(pair.weights))) if floor is not None else None
+        angles = self._angles(pooled, noise, exponent * math.log(2.0), axes)
         energy = _energy(per_tile, positions, groups, axes, 8)
         if float(energy.sum()) > 0.0 and np.isfinite(energy).all():
             reading.shares[f"{pair.value}"] = energy
             reading.energy = energy
         cells = growth.cells_per_wavelength(angles)
         sizes = [
-            pooled[f"r4.{a}"] ** 2 / pooled[f"r8.{a}"]
+            pooled[f"r8.{a}"] / math.sin(angle / 2.0) ** 8
             for a, angle in zip(axes, angles, strict=True)
             if angle > 0.0
         ]

@@ -22,6 +22,9 @@ Array = NDArray[np.float64]
 
 SHORTEST = 6
 _WIDER = 1.35
+# Growth by decades per snapshot leaves no time for six points: four do if they rise further.
+_FAST = 4
+_FAST_RISE = 1.5
 
 
 def windows(points: int, shortest: int = SHORTEST) -> Iterator[int]:
@@ -90,11 +93,14 @@ def straight_rise(
     residual rms may be at most `straight` times the rise.
     """
     best: Rise | None = None
-    for n in windows(len(y)):
+    for n in (*range(_FAST, SHORTEST), *windows(len(y))):
+        if n > len(y):
+            break
         part = y[-n:]
         if not np.isfinite(part).all() or not over[-(n - n // 2) :].all():
             continue
         fit = fit_line(x[-n:], part)
-        if fit.rise >= rise and fit.rms <= straight * fit.rise:
+        needed = rise if n >= SHORTEST else _FAST_RISE * rise
+        if fit.rise >= needed and fit.rms <= straight * fit.rise:
             best = Rise(fit, fit.slope / fit.error if fit.error > 0.0 else math.inf, 0.0, len(y) - n)
     return best

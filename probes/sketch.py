@@ -4,13 +4,13 @@ Each tile is contracted, axis by axis, with a few fixed vectors. Along an axis a
 
 * ``mean``: the constant vector;
 * ``sign``: a random vector orthogonal to the constant one (made from random signs);
-* ``r4``, ``r8``: random signs over the positions of the normalised 4th or 8th difference
+* ``r6``, ``r8``: random signs over the positions of the normalised 6th or 8th difference
   (binomial weights divided by 2**p), whose stencils reach over the tile's edge;
 * ``edge``: the second difference over the first or last four cells of the grid, in tiles that
   touch that boundary.
 
 A column of a tile is a product of one such vector per axis. The *bulk* group takes mean and sign
-along every axis, a *ripple* group takes r4 or r8 along one axis and mean or sign along the others.
+along every axis, a *ripple* group takes r6 or r8 along one axis and mean or sign along the others.
 Because mean and sign split each axis into orthogonal parts, the squared columns, weighted, give an
 unbiased estimate of the squared norm of a tile's values (bulk) or differences (ripple): Johnson and
 Lindenstrauss 1984; Halko, Martinsson and Tropp 2011, section 4. Everything is linear in the
@@ -39,7 +39,7 @@ from probes.tiling import Tiling, choose
 
 Array = NDArray[np.float64]
 
-ORDERS = (4, 8)
+ORDERS = (6, 8)
 HALO = max(ORDERS) // 2
 EDGE_ORDER = 2
 EDGE_CELLS = 4
@@ -54,7 +54,7 @@ _LARGE = 1e150
 class Group:
     """Columns that measure one thing.
 
-    name: "bulk", "r4.0", "r8.2", "edge.1" (kind and axis). axis is -1 and order 0 for the bulk.
+    name: "bulk", "r6.0", "r8.2", "edge.1" (kind and axis). axis is -1 and order 0 for the bulk.
     start, stop: column range in the sketch.
     """
 
@@ -84,10 +84,10 @@ class AxisColumns:
     """Vectors along one axis: weights (tiles, window, width) and how they are normalised.
 
     A tile's window covers its cells and `HALO` cells on both sides; weights outside the grid
-    are zero. Widths: `mean` 1, `sign` m - 1, then m each for r4, r8 and edge.
+    are zero. Widths: `mean` 1, `sign` m - 1, then m each for r6, r8 and edge.
     signs: (tiles, edge, m): the random signs themselves, by cell.
     energy: (tiles, width): factor by which a squared column is multiplied, so that the sum over
-    the columns of a kind estimates the sum of squares. places: (tiles, 4): cells, r4, r8 and
+    the columns of a kind estimates the sum of squares. places: (tiles, 4): cells, r6, r8 and
     edge positions.
     """
 
@@ -102,14 +102,14 @@ class AxisColumns:
         m = self.columns
         return {
             "flat": slice(0, m),
-            "r4": slice(m, 2 * m),
+            "r6": slice(m, 2 * m),
             "r8": slice(2 * m, 3 * m),
             "edge": slice(3 * m, 4 * m),
         }[kind]
 
 
-KINDS = ("r4", "r8", "edge")
-_ORDER = {"r4": 4, "r8": 8, "edge": EDGE_ORDER}
+KINDS = ("r6", "r8", "edge")
+_ORDER = {"r6": 6, "r8": 8, "edge": EDGE_ORDER}
 
 
 def _axis_columns(n: int, edge: int, tiles: int, m: int, seed: int, axis: int) -> AxisColumns:
@@ -209,7 +209,7 @@ class Layout:
     @cached_property
     def positions(self) -> Array:
         """(tiles, groups): cells or stencil positions behind each group, without a mask."""
-        at = {"flat": 0, "r4": 1, "r8": 2, "edge": 3}
+        at = {"flat": 0, "r6": 1, "r8": 2, "edge": 3}
         out = np.ones((self.tiling.count, len(self.groups)))
         for g, group in enumerate(self.groups):
             per_axis = [

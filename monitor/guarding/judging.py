@@ -9,9 +9,19 @@ from pathlib import Path
 import msgspec
 
 from monitor import condition
+from monitor.actions.proof import digest
 from monitor.config import Settings
+from monitor.growthlog.numbers import spell
+from monitor.growthlog.records import (
+    Channel,
+    Condition,
+    Evidence,
+    Segment,
+    Skipped,
+    Snapshot,
+    TileMap,
+)
 from monitor.growthlog.records import CloseUp as CloseUpRecord
-from monitor.growthlog.records import Condition, Segment, Skipped, Snapshot, TileMap
 from monitor.growthlog.window import Window
 from monitor.growthlog.write import as_logged
 from monitor.guarding.cadence import Strides
@@ -136,10 +146,10 @@ class Judge:
         if missed:
             self._record_missed(missed)
         sketched = self._masks.check(sketched)
-        measured = self._measurer.take(sketched, arrival.step, arrival.time)
-        evidence = as_logged(measured.evidence)
         before = self._state.condition
         self._index += 1
+        measured = self._measure(sketched)
+        evidence = as_logged(measured.evidence)
         self._state, verdict = condition.decide(
             self._state,
             evidence,
@@ -167,6 +177,21 @@ class Judge:
         judged = Judged(record, before)
         self._picture(measured, judged)
         return judged
+
+    def _measure(self, sketched: Sketched) -> Measured:
+        """Evidence of one snapshot. A fault in an estimate must not end the guarding of a run:
+        extremes and non-finite values are judged all the same, and growth afresh."""
+        arrival = sketched.arrival
+        try:
+            return self._measurer.take(sketched, arrival.step, arrival.time)
+        except Exception as error:
+            self._measurer = Measurer(self._settings)
+            self._journal.trouble(
+                f"growth could not be measured in {arrival.files[0].path} "
+                f"({type(error).__name__}: {error}), a fault of stepwarden itself; growth is "
+                "judged afresh from here on"
+            )
+            return Measured(bare_evidence(sketched), None, None)
 
     def _begin(self, sketched: Sketched) -> None:
         self._number += 1
@@ -216,6 +241,18 @@ class Judge:
     def _settings_differ(self, logged: dict[str, object]) -> bool:
         """Whether sketches made now cannot be compared with those before."""
         return _sketching(msgspec.to_builtins(self._settings)) != _sketching(logged)
+
+
+def bare_evidence(sketched: Sketched) -> Evidence:
+    """Extremes, sums and non-finite values alone."""
+    bad = next((b for b in sketched.blocks if b.bad), None)
+    return Evidence(
+        channels=tuple(
+            Channel(f=name, lo=spell(low), hi=spell(high), bad=count, total=spell(total))
+            for name, (low, high, total, count) in digest(sketched.blocks).items()
+        ),
+        bad_at=(bad.field, bad.part, bad.bad_at) if bad is not None else None,
+    )
 
 
 def relative(path: str, folder: Path) -> str:
