@@ -6,7 +6,12 @@ from enum import IntEnum
 
 
 class Exit(IntEnum):
-    """128 + n is used besides these when signal n ended a command after its closing record."""
+    """128 + n is used besides these when signal n ended a command after its closing record.
+
+    Where several apply to guard, the first of these counts: a configured action failed (12),
+    overflowed (11), alarm (10), signal (128 + n), nothing readable (3). A failed action comes first
+    because somebody has to do by hand what it did not; the alarm behind it is in the log.
+    """
 
     GOOD = 0  # nothing against it
     INTERNAL = 1  # a fault of stepwarden itself

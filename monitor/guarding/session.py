@@ -224,7 +224,8 @@ class Session:
             empty += 1
             if (empty >= 2 and not settling) or waited > patience:
                 return
-            self._asking.pause(SHORTEST_LOOK)
+            if settling:
+                self._asking.pause(SHORTEST_LOOK)
 
     # --- looking ------------------------------------------------------------------------
 

@@ -10,6 +10,7 @@ from __future__ import annotations
 import argparse
 import os
 import time
+from collections.abc import Sequence
 from pathlib import Path
 
 import numpy as np
@@ -18,7 +19,7 @@ from numpy.typing import NDArray
 CELLS = 40
 
 
-def main() -> None:
+def main(words: Sequence[str] | None = None) -> None:
     parser = argparse.ArgumentParser()
     parser.add_argument("out", type=Path)
     parser.add_argument("--factor", type=float, default=0.9)
@@ -32,7 +33,7 @@ def main() -> None:
     parser.add_argument("--in-place", action="store_true")
     parser.add_argument("--cells", type=int, default=CELLS)
     parser.add_argument("--burst-at", type=int, default=-1)
-    options = parser.parse_args()
+    options = parser.parse_args(words)
     options.out.mkdir(parents=True, exist_ok=True)
     u = initial(options.cells)
     well, sick = conductivity(options.cells, 0.9), conductivity(options.cells, options.factor)
@@ -54,7 +55,7 @@ def initial(cells: int) -> NDArray[np.float64]:
 
 
 def conductivity(cells: int, factor: float) -> NDArray[np.float64]:
-    """Diffusion number per cell: 0.15, rising smoothly to `factor` times its limit in the corner."""
+    """Diffusion number per cell: 0.15, rising smoothly to `factor` times its limit in a corner."""
     x = (np.arange(cells) - 0.72 * cells) / (0.2 * cells)
     bump = np.exp(-(x[:, None] ** 2) - x[None, :] ** 2)
     return 0.15 + (0.25 * factor - 0.15) * bump
