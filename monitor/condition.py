@@ -32,7 +32,7 @@ _KEPT = 512
 # A level has to stand this far above its rounding floor (in ln) to count.
 OVER_FLOOR = math.log(6.0)
 # A pair has to make up this much of the ripple of the last difference.
-SHARE = 0.15
+SHARE = 0.4
 # Longest wavelength, in cells, up to which growth is suspicious though not damning.
 _DOUBTFUL_CELLS = 6.5
 _DOUBLE_LARGEST = 709.78
@@ -111,9 +111,7 @@ def _settle(
     """From findings to the condition, with its memory."""
     ladder: tuple[Condition, ...] = ("gathering", "quiet", "swelling", "runaway", "overflowed")
     base: Condition = "quiet" if state.seen >= 4 else "gathering"
-    best = max(
-        findings, key=lambda f: (ladder.index(f.condition), f.weight), default=None
-    )
+    best = max(findings, key=lambda f: (ladder.index(f.condition), f.weight), default=None)
     called = max([base, *(f.condition for f in findings)], key=ladder.index)
     condition, calm = called, 0
     if ladder.index(called) < ladder.index(state.condition) and state.condition != "gathering":
@@ -132,12 +130,14 @@ def _settle(
     verdict = Verdict(condition=condition, kind=kind, alarmed=alarmed, why=why)
     if best is not None:
         verdict = msgspec.structs.replace(
-            verdict, field=best.field, factor=best.factor, cells=best.cells, onset=best.onset,
+            verdict,
+            field=best.field,
+            factor=best.factor,
+            cells=best.cells,
+            onset=best.onset,
             **_headroom(evidence, best),
         )
-    new = msgspec.structs.replace(
-        state, condition=condition, kind=kind, alarmed=alarmed, calm=calm
-    )
+    new = msgspec.structs.replace(state, condition=condition, kind=kind, alarmed=alarmed, calm=calm)
     return new, verdict
 
 
@@ -194,8 +194,11 @@ def _outside(evidence: Evidence, fields: Mapping[str, FieldSpec]) -> list[Findin
                 place = f", first at {list(evidence.bad_at[2])}"
             out.append(
                 Finding(
-                    "overflowed", "numerical", c.f,
-                    f"{c.f} holds {c.bad} values that are not finite{place}", 1e9,
+                    "overflowed",
+                    "numerical",
+                    c.f,
+                    f"{c.f} holds {c.bad} values that are not finite{place}",
+                    1e9,
                 )
             )
         spec = fields.get(c.f.split("[")[0])
@@ -219,8 +222,10 @@ def _collapsing(dts: tuple[float, ...]) -> list[Finding]:
         return []
     usual = float(np.median(dts[:-4]))
     last = dts[-4:]
-    if usual > 0 and last[-1] < 0.1 * usual and all(
-        b < a for a, b in zip(last[:-1], last[1:], strict=True)
+    if (
+        usual > 0
+        and last[-1] < 0.1 * usual
+        and all(b < a for a, b in zip(last[:-1], last[1:], strict=True))
     ):
         why = f"the time step collapses: {last[-1]:.3g} against {usual:.3g} usually"
         return [Finding("swelling", "undetermined", "", why, 5.0)]
@@ -275,8 +280,14 @@ def _lines(
     onset = _onset(x, y, floor, found.start, found.fit.slope)
     return [
         Finding(
-            "swelling", "undetermined", name, f"{what}, {cells:.1f} cells long", found.fit.rise,
-            factor, cells, onset,
+            "swelling",
+            "undetermined",
+            name,
+            f"{what}, {cells:.1f} cells long",
+            found.fit.rise,
+            factor,
+            cells,
+            onset,
         )
     ]
 
@@ -327,8 +338,16 @@ def _tile_line(evidence: Evidence, alarm: AlarmSection, x: float) -> list[Findin
     )
     onset = (int(max(0.0, x - line.over / line.slope * per)), int(x - line.span * per))
     return [
-        Finding("swelling", "undetermined", line.f, why, line.rise, factor, line.cells,
-                (min(onset), onset[1]))
+        Finding(
+            "swelling",
+            "undetermined",
+            line.f,
+            why,
+            line.rise,
+            factor,
+            line.cells,
+            (min(onset), onset[1]),
+        )
     ]
 
 
@@ -342,12 +361,15 @@ def _modes(
             continue
         off = abs(m.gain - m.foretold)
         true_to_rate = off <= 0.1 + 0.05 * m.foretold
-        enough = m.grown >= math.log(10.0) or (m.foretold >= 1.0 and m.held > alarm.held)
+        enough = m.held > alarm.held and max(m.grown, 2.0 * m.foretold) >= math.log(10.0)
         short = m.cells is not None and m.cells <= alarm.mode_cells
         odd = m.odd and off <= max(0.15, 0.5 * m.foretold) and m.foretold > 0.2
         # Products of a resolved growth (its harmonics) are shorter and grow faster than it does.
         carried = m.share < 0.3 and any(
-            o.f == m.f and o.view == m.view and o.share > m.share and 1.0 < o.factor < m.factor
+            o.f == m.f
+            and o.view == m.view
+            and o.share > m.share
+            and 1.0 < o.factor < m.factor
             and (o.cells is None or o.cells > _DOUBTFUL_CELLS)
             for o in evidence.modes
         )
@@ -363,8 +385,16 @@ def _modes(
             what += ", alternating in sign from one snapshot to the next"
         if ((short and true_to_rate and enough) or odd) and not expected:
             out.append(
-                Finding("runaway", "numerical", m.f, what, 100.0 + m.held, factor, m.cells,
-                        _mode_onset(m, evidence, x))
+                Finding(
+                    "runaway",
+                    "numerical",
+                    m.f,
+                    what,
+                    100.0 + m.held,
+                    factor,
+                    m.cells,
+                    _mode_onset(m, evidence, x),
+                )
             )
         elif true_to_rate and enough:
             out.append(Finding("quiet", "resolved", m.f, what, 1.0, factor, m.cells))

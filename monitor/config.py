@@ -75,8 +75,8 @@ class AlarmSection(Section, frozen=True, kw_only=True):
     run_length: float = 1e5
     decades: float = 2.0
     straight: float = 0.04
-    cells: float = 4.3
-    mode_cells: float = 4.0
+    cells: float = 4.1
+    mode_cells: float = 3.5
     held: int = 6
     calm: int = 12
 

@@ -53,6 +53,11 @@ def pool(levels: Array, positions: Array) -> float:
     return size * math.sqrt(float(np.dot((levels / size) ** 2, positions)) / total)
 
 
+def pool_many(levels: Array, positions: Array) -> float:
+    """The same over several groups at once: levels and positions (tiles, groups)."""
+    return pool(levels.ravel(), positions.ravel())
+
+
 def half_angle(low: float, high: float, p: int, q: int) -> float:
     """theta in radians per cell of a wave from its levels at orders p < q; 0 where unseen.
 

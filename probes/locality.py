@@ -8,24 +8,9 @@ import numpy as np
 from numpy.typing import NDArray
 
 from probes.growth import fit_lines
-from probes.sketch import ORDERS, Layout
 from probes.tiling import Box, Tiling
 
 Array = NDArray[np.float64]
-
-
-def ripple_energy(levels: Array, positions: Array, layout: Layout, order: int) -> Array:
-    """(tiles,): sum of squared ripple of one order over all axes, from levels (tiles, groups).
-
-    Raises ValueError for an order the sketch does not have.
-    """
-    if order not in ORDERS:
-        raise ValueError(f"the sketch has ripples of order {ORDERS}, not {order}")
-    out = np.zeros(levels.shape[0])
-    for g, group in enumerate(layout.groups):
-        if group.kind == f"r{order}":
-            out += levels[:, g] ** 2 * positions[:, g]
-    return out
 
 
 def face_shares(energy: Array, tiling: Tiling) -> dict[str, float]:
@@ -61,8 +46,10 @@ def straightest_tile(
     n = 6
     while n <= levels.shape[0]:
         window, floor = levels[-n:], floors[-n:]
-        seen = np.isfinite(window).all(axis=0) & (window[n // 2 :] > floor[n // 2 :] + over).all(axis=0)
-        seen &= window[-1] - window[0] > 0.8 * rise
+        seen = np.isfinite(window).all(axis=0)
+        seen &= (window[n // 2 :] > floor[n // 2 :] + over).all(axis=0)
+        with np.errstate(invalid="ignore"):
+            seen &= window[-1] - window[0] > 0.8 * rise
         at = np.flatnonzero(seen)
         if at.size:
             slope, rms = fit_lines(window[:, at])

@@ -83,13 +83,13 @@ class MaskBook:
             if state.share > 0.5:
                 found.append(
                     f"field {name!r}: {100 * state.share:.0f} % of the cells were not finite in "
-                    "the first snapshot and are taken for a mask; declare mask = \"declared\" or "
+                    'the first snapshot and are taken for a mask; declare mask = "declared" or '
                     '"none"'
                 )
         for key, names in masked.items():
-            for other in clear.get(key, []):
-                found.append(
-                    f"field {names[0]!r} has a mask and {other!r} on the same grid has none; "
-                    'declare mask = "declared" or "none"'
-                )
+            found += [
+                f"field {names[0]!r} has a mask and {other!r} on the same grid has none; "
+                'declare mask = "declared" or "none"'
+                for other in clear.get(key, [])
+            ]
         return found

@@ -58,7 +58,7 @@ def ritz_pairs(differences: Array, noise: float = 0.0) -> list[RitzPair]:
     scale = float(np.abs(differences).max(initial=0.0))
     if scale == 0.0 or not math.isfinite(scale):
         return []
-    r = np.linalg.qr(differences / scale, mode="r")
+    r = np.asarray(np.linalg.qr(differences / scale, mode="r"))
     steps = r.shape[1] - 1
     before, after = r[:, :-1], r[:, 1:]
     sizes, right = np.linalg.svd(np.vstack([before, after]))[1:]
@@ -91,7 +91,11 @@ def ritz_pairs(differences: Array, noise: float = 0.0) -> list[RitzPair]:
         weights = np.append(pair * part[j] * combine[:, j], 0.0)
         out.append(
             RitzPair(
-                complex(mu), float(residuals[j]), weights, size * scale, size / whole if whole else 0.0
+                complex(mu),
+                float(residuals[j]),
+                weights,
+                size * scale,
+                size / whole if whole else 0.0,
             )
         )
     return sorted(out, key=lambda p: -p.size)

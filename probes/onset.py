@@ -25,6 +25,8 @@ _WIDER = 1.35
 # Growth by decades per snapshot leaves no time for six points: four do if they rise further.
 _FAST = 4
 _FAST_RISE = 1.5
+# Residual rms, in ln, that no straight line exceeds however far it rises.
+_LARGEST_RMS = 0.25
 
 
 def windows(points: int, shortest: int = SHORTEST) -> Iterator[int]:
@@ -101,6 +103,7 @@ def straight_rise(
             continue
         fit = fit_line(x[-n:], part)
         needed = rise if n >= SHORTEST else _FAST_RISE * rise
-        if fit.rise >= needed and fit.rms <= straight * fit.rise:
-            best = Rise(fit, fit.slope / fit.error if fit.error > 0.0 else math.inf, 0.0, len(y) - n)
+        if fit.rise >= needed and fit.rms <= min(straight * fit.rise, _LARGEST_RMS):
+            score = fit.slope / fit.error if fit.error > 0.0 else math.inf
+            best = Rise(fit, score, 0.0, len(y) - n)
     return best

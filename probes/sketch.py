@@ -138,7 +138,7 @@ def _axis_columns(n: int, edge: int, tiles: int, m: int, seed: int, axis: int) -
             order = _ORDER[kind]
             half = order // 2
             span = slice((1 + kind_at) * m, (2 + kind_at) * m)
-            centres = range(max(lo, half), min(hi, n - half))
+            centres = list(range(max(lo, half), min(hi, n - half)))
             if kind == "edge":
                 near = set(range(half, EDGE_CELLS - half)) | set(
                     range(n - EDGE_CELLS + half, n - half)
@@ -177,9 +177,7 @@ class Layout:
         t = self.tiling
         return tuple(
             _axis_columns(n, edge, count, self.columns, self.seed, axis)
-            for axis, (n, edge, count) in enumerate(
-                zip(t.shape, t.edge, t.counts, strict=True)
-            )
+            for axis, (n, edge, count) in enumerate(zip(t.shape, t.edge, t.counts, strict=True))
         )
 
     @cached_property
@@ -189,10 +187,9 @@ class Layout:
         for axis in range(len(self.tiling.shape)):
             names += [(kind, axis, _ORDER[kind]) for kind in KINDS]
         return tuple(
-            Group(
-                kind if axis < 0 else f"{kind}.{axis}", kind, axis, order, i * width, (i + 1) * width
-            )
+            Group(f"{kind}.{axis}" if kind != "bulk" else kind, kind, axis, order, *at)
             for i, (kind, axis, order) in enumerate(names)
+            for at in [(i * width, (i + 1) * width)]
         )
 
     @property
@@ -213,7 +210,8 @@ class Layout:
         out = np.ones((self.tiling.count, len(self.groups)))
         for g, group in enumerate(self.groups):
             per_axis = [
-                ax.places[:, at[self._kind(group, a)]].astype(float) for a, ax in enumerate(self.axes)
+                ax.places[:, at[self._kind(group, a)]].astype(float)
+                for a, ax in enumerate(self.axes)
             ]
             out[:, g] = _outer(per_axis).ravel()
         return out
@@ -298,7 +296,7 @@ class Pass:
         self._d = d
 
     def add(self, slab: Array, peak: float) -> None:
-        """Take the next slab, shape (n, *shape[1:]), float64, finite; peak is its largest |value|."""
+        """Take the next slab: (n, *shape[1:]), float64, finite. peak: its largest |value|."""
         if peak > _LARGE:
             needed = math.frexp(peak)[1] - math.frexp(_LARGE)[1] + 1
             if needed > self.exponent:

@@ -46,6 +46,8 @@ class Ending:
         it came."""
         run = self._run
         if self._process is not None and not self._process.alive():
+            if self._process.identity is None:
+                return f"there is no process {run.pid} on this host: ended, or elsewhere"
             return f"process {run.pid} has ended"
         if run.last_step and step is not None and step >= run.last_step:
             return f"step {step} is the last one"

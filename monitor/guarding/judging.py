@@ -7,6 +7,7 @@ from dataclasses import dataclass
 from pathlib import Path
 
 import msgspec
+from msgspec.structs import replace
 
 from monitor import condition
 from monitor.actions.proof import digest
@@ -20,6 +21,7 @@ from monitor.growthlog.records import (
     Skipped,
     Snapshot,
     TileMap,
+    Verdict,
 )
 from monitor.growthlog.records import CloseUp as CloseUpRecord
 from monitor.growthlog.window import Window
@@ -150,14 +152,7 @@ class Judge:
         self._index += 1
         measured = self._measure(sketched)
         evidence = as_logged(measured.evidence)
-        self._state, verdict = condition.decide(
-            self._state,
-            evidence,
-            arrival.step,
-            self._index,
-            self._settings.alarm,
-            self._settings.fields,
-        )
+        self._state, verdict = self._decide(evidence, arrival.step)
         self._save(self._journal.next_seq)
         record = self._journal.write(
             Snapshot,
@@ -192,6 +187,26 @@ class Judge:
                 "judged afresh from here on"
             )
             return Measured(bare_evidence(sketched), None, None)
+
+    def _decide(self, evidence: Evidence, step: int | None) -> tuple[condition.State, Verdict]:
+        """The verdict; a fault in it leaves the condition as it was, but for an overflow."""
+        alarm, fields = self._settings.alarm, self._settings.fields
+        try:
+            return condition.decide(self._state, evidence, step, self._index, alarm, fields)
+        except Exception as error:
+            self._journal.trouble(
+                f"no decision could be made ({type(error).__name__}: {error}), a fault of "
+                "stepwarden itself",
+                once=True,
+            )
+            if not any(channel.bad for channel in evidence.channels):
+                state = self._state
+                return state, Verdict(
+                    condition=state.condition, kind=state.kind, alarmed=state.alarmed
+                )
+            state = replace(self._state, condition="overflowed", kind="numerical", alarmed=True)
+            why = "values that are not finite beyond the mask"
+            return state, Verdict(condition="overflowed", kind="numerical", alarmed=True, why=why)
 
     def _begin(self, sketched: Sketched) -> None:
         self._number += 1

@@ -149,6 +149,12 @@ class Session:
             number = self._asking.signals.caught or signal.SIGTERM
             name = signal.Signals(number).name
             return self._close(f"signal {name}", 128 + number, NOTICE_SECONDS_SIGNALLED)
+        except LockLost:
+            raise
+        except Exception as error:
+            # A fault of ours: whoever reads the log should not have to guess.
+            self._close(f"internal error: {type(error).__name__}: {error}", Exit.INTERNAL, 0.0)
+            raise
         finally:
             self._teller.finish()
             self._ending.close()

@@ -1,0 +1,1 @@
+"""Parts of the measurement: memory of a channel, its reading, its modes, and where it grows."""
