@@ -6,6 +6,7 @@ and a later rehearsal of the log cannot differ.
 
 from __future__ import annotations
 
+import itertools
 import math
 from collections.abc import Mapping
 from dataclasses import dataclass
@@ -222,11 +223,7 @@ def _collapsing(dts: tuple[float, ...]) -> list[Finding]:
         return []
     usual = float(np.median(dts[:-4]))
     last = dts[-4:]
-    if (
-        usual > 0
-        and last[-1] < 0.1 * usual
-        and all(b < a for a, b in zip(last[:-1], last[1:], strict=True))
-    ):
+    if usual > 0 and last[-1] < 0.1 * usual and all(b < a for a, b in itertools.pairwise(last)):
         why = f"the time step collapses: {last[-1]:.3g} against {usual:.3g} usually"
         return [Finding("swelling", "undetermined", "", why, 5.0)]
     return []
@@ -255,13 +252,12 @@ def _lines(
     short = cells is not None and max(recent) <= min(alarm.cells, 1.3 * min(recent))
     doubtful = cells is not None and cells <= _DOUBTFUL_CELLS
     spec = fields.get(name.split("[")[0])
-    unit = "step"
     line = straight_rise(x, y, over, alarm.decades * math.log(10.0), alarm.straight)
     if line is not None and short and not _expected(line.fit.slope, evidence, spec):
         factor = _factor(line.fit.slope, line.fit.error)
         why = (
-            f"{name}: grid-scale ripple grew ×{math.exp(line.fit.rise):.3g} on a straight line over "
-            f"{line.fit.points} snapshots, {math.exp(line.fit.slope):.5g} per {unit}, "
+            f"{name}: grid-scale ripple grew ×{math.exp(line.fit.rise):.3g} on a straight line "
+            f"over {line.fit.points} snapshots, {math.exp(line.fit.slope):.5g} per step, "
             f"{cells:.1f} cells long"
         )
         onset = _onset(x, y, floor, line.start, line.fit.slope)
