@@ -72,7 +72,7 @@ class _Block:
         self._note(top, bottom)
         finite = [v for v in (top.max(initial=-np.inf), -bottom.min(initial=np.inf)) if v > -np.inf]
         self.sums.add(slab, max((abs(v) for v in finite), default=0.0))
-        with np.errstate(over="ignore"):
+        with np.errstate(over="ignore", invalid="ignore"):
             self.totals.append(float(slab.sum()))
         if self.keeps:
             self._keep(whole, n)
@@ -210,7 +210,7 @@ class _Block:
             peak=Packed.of(peak),
             low=self.low if some else 0.0,
             high=self.high if some else 0.0,
-            total=math.fsum(t for t in self.totals if math.isfinite(t)),
+            total=math.fsum(self.totals) if np.isfinite(self.totals).all() else math.nan,
             zeros=zeros,
             dtype=info.dtype,
             spacing_of_storage=storage_spacing(info.dtype),

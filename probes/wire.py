@@ -115,7 +115,7 @@ class BlockReply(msgspec.Struct, frozen=True, kw_only=True):
     positions: float32 (tiles, groups): valid stencil positions behind each column group.
     peak: float32 (tiles,): largest finite |value| per tile.
     low, high: exact extremes of the finite values (0 if there are none).
-    total: sum of the finite values, math.fsum of slab sums.
+    total: sum of the finite values, math.fsum of slab sums; NaN where it exceeds the number type.
     masked: cells left out because the mask says so; bad: further non-finite cells;
     bad_at: index of the first of these (logical order), () if none; bad_tile: its tile or -1.
     unmasked: cells that the mask covers but that are finite now.

@@ -36,13 +36,13 @@ class Reading:
 
     energy: (tiles,) grid-scale energy of what grows: of the difference, or of the Ritz vector once
     there is one. tile_levels, tile_floors: (tiles,) ln, -inf for zero. before: tile_levels of the
-    snapshot before. floor_energy: (tiles,) sum of squares that rounding gives the ripple.
+    snapshot before. noise: norm of what rounding alone gives the ripple of a difference.
     """
 
     memory: Memory
     record: Channel
     positions: Array
-    floor_energy: Array
+    noise: float
     tile_floors: Array
     tile_levels: Array
     energy: Array
@@ -82,7 +82,7 @@ def read_channel(memory: Memory, blocks: list[BlockReply]) -> tuple[Reading, Sca
     count = positions[:, ripples].sum(axis=1)
     peak = np.concatenate([b.peak.array() for b in blocks])
     floor = growth.rounding_floor(peak, blocks[0].spacing_of_storage, HIGH)
-    floor_energy = floor**2 * count
+    floor_rms = growth.pool(floor, count)
     largest = max(max(abs(b.low), abs(b.high)) for b in blocks)
     record = Channel(
         f=memory.name,
@@ -90,7 +90,7 @@ def read_channel(memory: Memory, blocks: list[BlockReply]) -> tuple[Reading, Sca
         hi=spell(max(b.high for b in blocks)),
         bad=sum(b.bad for b in blocks),
         own=_raised(ln(growth.pool_many(per_tile[:, ripples], positions[:, ripples])), exponent),
-        floor=ln(math.sqrt(float(floor_energy.sum()) / max(1.0, float(count.sum())))),
+        floor=ln(floor_rms),
         vary=_raised(ln(_variation(memory, columns, largest)), exponent),
         total=spell(math.fsum(b.total for b in blocks)),
         top=_largest_number(blocks[0].dtype),
@@ -100,7 +100,7 @@ def read_channel(memory: Memory, blocks: list[BlockReply]) -> tuple[Reading, Sca
         memory,
         record,
         positions,
-        floor_energy,
+        floor_rms * math.sqrt(float(count.sum())),
         _ln_each(np.where(count > 0, floor, 0.0)),
         nothing,
         np.zeros(memory.tiles),

@@ -55,7 +55,7 @@ def _view(reading: Reading, view: str, kinds: tuple[str, ...], stride: int | Non
     memory = reading.memory
     window = len(memory.differences) - 1
     vectors, exponent = memory.vectors(kinds)
-    noise = math.ldexp(math.sqrt(float(reading.floor_energy.sum())), -exponent)
+    noise = math.ldexp(reading.noise, -exponent)
     track = memory.tracks.setdefault(view, deque())
     rising = [
         p
