@@ -36,6 +36,10 @@ class NotYet(ReadError):
     """A snapshot file looks incomplete: its writer is probably still at it, so try again later."""
 
 
+class Held(NotYet):
+    """The file's writer holds it in a way that no reader gets in for now."""
+
+
 class Refused(ReadError):
     """A file is declined on purpose (external data, a size over the budget, a missing reader)."""
 
