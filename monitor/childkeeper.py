@@ -1,0 +1,221 @@
+"""Starts, bounds and replaces the reading process."""
+
+from __future__ import annotations
+
+import contextlib
+import os
+import select
+import signal
+import struct
+import subprocess
+import sys
+import time
+from collections.abc import Iterable
+from pathlib import Path
+from typing import Any
+
+import probes
+from probes.errors import ChildError
+from probes.spec import WatchSpec
+from probes.wire import (
+    LARGEST_FRAME,
+    Configure,
+    Failed,
+    Ready,
+    Reply,
+    Request,
+    Settled,
+    decode_reply,
+    encode,
+)
+
+MEMORY_MB = 400
+# How long a new process may take to be ready: on a busy network home imports are slow.
+START_SECONDS = 120.0
+# After its own alarm, and after a kill, the process gets this long to end.
+GRACE = 5.0
+KILL_SECONDS = 5.0
+MOST_ABANDONED = 2
+_THREADS = ("OMP_NUM_THREADS", "OPENBLAS_NUM_THREADS", "MKL_NUM_THREADS", "BLIS_NUM_THREADS")
+
+
+class ChildKeeper:
+    """One reading process at a time, replaced when it dies or hangs.
+
+    watch: what to look at. known: content keys that are in the log already. memory_mb: what the
+    process may use beyond its start. Not thread-safe.
+    """
+
+    def __init__(
+        self, watch: WatchSpec, known: Iterable[str], *, memory_mb: int = MEMORY_MB
+    ) -> None:
+        self._watch, self._memory_mb = watch, memory_mb
+        self._known: set[str] = set(known)
+        self._process: subprocess.Popen[bytes] | None = None
+        self._told: set[str] = set()
+        self._abandoned: list[subprocess.Popen[bytes]] = []
+
+    def ask(self, request: Request, timeout_s: float) -> Reply:
+        """Send a request and wait for its reply, a process being started if there is none.
+
+        Raises ChildError where the process dies, hangs beyond the time limit (it is killed) or
+        answers nonsense; the next request starts a new one. Failed replies are returned.
+        """
+        if self._process is None or self._process.poll() is not None:
+            self._start()
+        self._tell_settled()
+        return self._exchange(request, timeout_s)
+
+    def settled(self, keys: Iterable[str]) -> None:
+        """These contents are in the log now and are never to be offered again."""
+        self._known |= set(keys)
+
+    def close(self) -> None:
+        """End the process."""
+        process, self._process = self._process, None
+        if process is not None:
+            with contextlib.suppress(OSError):
+                _pipe(process.stdin).close()
+            try:
+                process.wait(0.5)
+            except subprocess.TimeoutExpired:
+                self._end(process)
+            _pipe(process.stdout).close()
+
+    # --- the process --------------------------------------------------------------------
+
+    def _start(self) -> None:
+        self._forget()
+        self._abandoned = [p for p in self._abandoned if p.poll() is None]
+        if len(self._abandoned) >= MOST_ABANDONED:
+            raise ChildError(
+                "file system not answering",
+                self._watch.folder,
+                f"{len(self._abandoned)} reading processes hang and cannot be ended",
+            )
+        # -P keeps the working folder out of the import path, and so does the folder "/". The path
+        # of the package itself goes first, so that a source checkout's child is its own.
+        root = str(Path(probes.__file__).resolve().parent.parent)
+        code = "import sys; sys.path.insert(0, sys.argv.pop(1)); import probes.child as c; c.main()"
+        environment = {**os.environ, "PYTHONSAFEPATH": "1", "PYTHONUNBUFFERED": "1"}
+        environment |= dict.fromkeys(_THREADS, "1")
+        try:
+            self._process = subprocess.Popen(
+                [sys.executable, "-P", "-c", code, root, str(self._memory_mb)],
+                stdin=subprocess.PIPE,
+                stdout=subprocess.PIPE,
+                cwd="/",
+                env=environment,
+                bufsize=0,
+            )
+        except OSError as error:
+            raise ChildError(f"the reading process cannot be started ({error.strerror})") from error
+        self._told = set(self._known)
+        reply = self._exchange(
+            Configure(watch=self._watch, known=tuple(self._known)), START_SECONDS
+        )
+        if isinstance(reply, Failed):
+            self._forget()
+            raise ChildError(reply.what, reply.where, reply.remedy)
+        if not isinstance(reply, Ready):
+            self._forget()
+            raise ChildError("the reading process did not get ready")
+
+    def _tell_settled(self) -> None:
+        news = self._known - self._told
+        if news:
+            self._exchange(Settled(keys=tuple(news)), START_SECONDS)
+            self._told |= news
+
+    def _exchange(self, request: Request, timeout_s: float) -> Reply:
+        process = self._process
+        if process is None:
+            raise ChildError("the reading process is not running")
+        deadline = time.monotonic() + timeout_s
+        try:
+            limit = f"{max(0.1, timeout_s):.3f}".encode()
+            _send(process, struct.pack(">I", len(limit)) + limit + encode(request), deadline)
+            (length,) = struct.unpack(">I", _receive(process, 4, deadline + GRACE))
+            if length > LARGEST_FRAME:
+                raise ChildError(f"a reply of {length} bytes is over the limit")
+            return decode_reply(_receive(process, length, deadline + GRACE))
+        except TimeoutError as error:
+            self._end(process)
+            self._process = None
+            raise ChildError(
+                f"no answer within {timeout_s:.0f} s", remedy="the reading process was ended"
+            ) from error
+        except (EOFError, BrokenPipeError, ConnectionError) as error:
+            why = _how_it_ended(process)
+            self._forget()
+            raise ChildError(f"the reading process {why}") from error
+        except ChildError:
+            self._forget()
+            raise
+        except BaseException:
+            # A signal came in between: what is in the pipe belongs to nobody now.
+            self._forget()
+            raise
+
+    def _forget(self) -> None:
+        process, self._process = self._process, None
+        if process is not None:
+            self._end(process)
+
+    def _end(self, process: subprocess.Popen[bytes]) -> None:
+        """Kill; a process that hangs in the kernel cannot be, and is abandoned."""
+        with contextlib.suppress(OSError):
+            process.kill()
+        try:
+            process.wait(KILL_SECONDS)
+        except subprocess.TimeoutExpired:
+            self._abandoned.append(process)
+        for pipe in (process.stdin, process.stdout):
+            with contextlib.suppress(OSError):
+                _pipe(pipe).close()
+
+
+def _pipe(pipe: Any) -> Any:
+    assert pipe is not None
+    return pipe
+
+
+def _send(process: subprocess.Popen[bytes], data: bytes, deadline: float) -> None:
+    """Write everything, without waiting for ever for a process that does not read."""
+    handle = _pipe(process.stdin).fileno()
+    os.set_blocking(handle, False)
+    view = memoryview(data)
+    while view:
+        left = deadline - time.monotonic()
+        if left <= 0 or not select.select([], [handle], [], left)[1]:
+            raise TimeoutError
+        with contextlib.suppress(BlockingIOError):
+            view = view[os.write(handle, view) :]
+
+
+def _receive(process: subprocess.Popen[bytes], count: int, deadline: float) -> bytes:
+    """Read `count` bytes. Raises EOFError at an early end, TimeoutError at the deadline."""
+    handle = _pipe(process.stdout).fileno()
+    out = bytearray()
+    while len(out) < count:
+        left = deadline - time.monotonic()
+        if left <= 0 or not select.select([handle], [], [], left)[0]:
+            raise TimeoutError
+        block = os.read(handle, min(count - len(out), 1 << 20))
+        if not block:
+            raise EOFError
+        out += block
+    return bytes(out)
+
+
+def _how_it_ended(process: subprocess.Popen[bytes]) -> str:
+    try:
+        code = process.wait(1.0)
+    except subprocess.TimeoutExpired:
+        return "closed its pipe"
+    if code == -signal.SIGALRM:
+        return "took too long and ended itself"
+    if code < 0:
+        with contextlib.suppress(ValueError):
+            return f"was ended by {signal.Signals(-code).name}"
+    return f"ended with status {code}"
