@@ -36,6 +36,19 @@ START_SECONDS = 120.0
 GRACE = 5.0
 KILL_SECONDS = 5.0
 MOST_ABANDONED = 2
+# The child runs this very package, wherever it was imported from, without its folder becoming one
+# that other modules are looked for in. -P and the working folder "/" keep a run's folder out too.
+_CODE = """
+import importlib.util, os, sys
+package = sys.argv.pop(1)
+spec = importlib.util.spec_from_file_location(
+    "probes", os.path.join(package, "__init__.py"), submodule_search_locations=[package]
+)
+sys.modules["probes"] = module = importlib.util.module_from_spec(spec)
+spec.loader.exec_module(module)
+from probes.child import main
+main()
+"""
 _THREADS = ("OMP_NUM_THREADS", "OPENBLAS_NUM_THREADS", "MKL_NUM_THREADS", "BLIS_NUM_THREADS")
 
 
@@ -93,15 +106,12 @@ class ChildKeeper:
                 self._watch.folder,
                 f"{len(self._abandoned)} reading processes hang and cannot be ended",
             )
-        # -P keeps the working folder out of the import path, and so does the folder "/". The path
-        # of the package itself goes first, so that a source checkout's child is its own.
-        root = str(Path(probes.__file__).resolve().parent.parent)
-        code = "import sys; sys.path.insert(0, sys.argv.pop(1)); import probes.child as c; c.main()"
+        package = str(Path(probes.__file__).resolve().parent)
         environment = {**os.environ, "PYTHONSAFEPATH": "1", "PYTHONUNBUFFERED": "1"}
         environment |= dict.fromkeys(_THREADS, "1")
         try:
             self._process = subprocess.Popen(
-                [sys.executable, "-P", "-c", code, root, str(self._memory_mb)],
+                [sys.executable, "-P", "-c", _CODE, package, str(self._memory_mb)],
                 stdin=subprocess.PIPE,
                 stdout=subprocess.PIPE,
                 cwd="/",

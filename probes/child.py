@@ -20,6 +20,7 @@ from typing import BinaryIO
 
 import msgspec
 
+from probes.arrivals.groups import Describe
 from probes.arrivals.watching import Watching
 from probes.errors import (
     ArrivalError,
@@ -65,6 +66,7 @@ from probes.wire import (
 
 _PR_SET_PDEATHSIG = 1
 _MOST_RECORDS_TOLD = 10_000
+_CALM = 60.0
 
 
 class Child:
@@ -74,6 +76,7 @@ class Child:
         self._watch = WatchSpec(folder="/", snapshots=SnapshotSpec(pattern=()))
         self._watching: Watching | None = None
         self._masks = MaskBook()
+        self._finding: dict[tuple[tuple[str, ...], int], Watching] = {}
 
     def answer(self, request: Request) -> Reply:
         """The reply to one request; expected failures become Failed."""
@@ -132,6 +135,7 @@ class Child:
             self._watching.close()
         self._watch = request.watch
         self._masks = MaskBook()
+        self._finding = {}
         self._watching = Watching(
             request.watch.folder, request.watch.snapshots, self._describe, request.known
         )
@@ -154,12 +158,15 @@ class Child:
         read = 0
         for file in arrival.files:
             _unchanged(file, arrival.growing)
-            with open_snapshot(Path(file.path), self._watch.snapshots) as snapshot:
+            with (
+                _short_is_broken(file),
+                open_snapshot(Path(file.path), self._watch.snapshots) as snapshot,
+            ):
                 contents = snapshot.contents()
                 if arrival.record >= contents.records:
                     raise NotYet(f"record {arrival.record} is not there yet", file.path)
                 arrival = _with_clock(arrival, contents, self._watch.snapshots.step_factor)
-                chosen = _chosen(contents, file, self._watch, len(arrival.files) > 1)
+                chosen = _chosen(contents, file, self._watch)
                 if len(arrival.files) == 1 or arrival.files[0] is file:
                     told += contents.notes
                 for info, name, spec in chosen:
@@ -173,7 +180,8 @@ class Child:
                     blocks += found
                     crops += cut
                     told += remarks
-            # What was read may have been changing under us: only an unchanged file counts.
+        # What was read may have been changing under us: only unchanged files count.
+        for file in arrival.files:
             _unchanged(file, arrival.growing)
         missing = set(self._watch.fields) - {b.field.split("[")[0] for b in blocks}
         if missing:
@@ -195,19 +203,31 @@ class Child:
         )
 
     def _find(self, request: FindCheckpoint) -> Found:
-        spec = SnapshotSpec(pattern=request.pattern, parts=request.parts)
-        watching = Watching(self._watch.folder, spec, self._describe)
-        try:
-            found = watching.complete_now()
-            if request.companions:
-                beside = Watching(
-                    self._watch.folder, SnapshotSpec(pattern=request.companions), self._describe
-                )
-                found = _with_companions(found, beside.complete_now())
-                beside.close()
-        finally:
-            watching.close()
+        found = self._complete(request.pattern, request.parts, self._describe_checkpoint)
+        for pattern in request.companions:
+            beside = self._complete((pattern,), 0, lambda path: Contents(()))
+            found = _with_companions(found, beside, stepped="{step}" in pattern)
         return Found(checkpoints=found)
+
+    def _complete(
+        self, pattern: tuple[str, ...], parts: int, describe: Describe
+    ) -> tuple[Arrival, ...]:
+        """What is complete by a pattern, in order. The listing is kept from call to call."""
+        what = (pattern, parts)
+        if what not in self._finding:
+            spec = SnapshotSpec(pattern=pattern, parts=parts, record_axis="no")
+            self._finding[what] = Watching(self._watch.folder, spec, describe, events=False)
+        return self._finding[what].complete_now()
+
+    def _describe_checkpoint(self, path: str) -> Contents:
+        """Step and time if they can be read. A checkpoint may have any format of its own."""
+        try:
+            with open_snapshot(Path(path), SnapshotSpec(pattern=(), record_axis="no")) as snapshot:
+                return snapshot.contents()
+        except NotYet:
+            raise
+        except ReadError:
+            return Contents(())
 
     def _examine(self, request: Examine) -> Examined:
         path = Path(request.path)
@@ -251,18 +271,35 @@ def _unchanged(file: FileId, growing: bool) -> None:
         raise NotYet("the file has been written again", file.path)
 
 
+@contextlib.contextmanager
+def _short_is_broken(file: FileId) -> Iterator[None]:
+    """What is incomplete although nobody has written to it for a minute will stay so."""
+    try:
+        yield
+    except NotYet as error:
+        calm = time.time() - file.mtime_ns / 1e9
+        if calm < _CALM:
+            raise
+        what = f"{error.what}, and it has not changed for {calm:.0f} s"
+        raise ReadError(what, error.where, error.remedy) from error
+
+
 def _with_clock(arrival: Arrival, contents: Contents, factor: int) -> Arrival:
-    """Step and time from the contents where the arrival has none."""
+    """Step and time from the contents where the arrival has none. Raises NotYet where a record of
+    a growing file is no longer that of the step it was."""
     step, time_ = arrival.step, arrival.time
-    if step is None and contents.steps[arrival.record] is not None:
-        step = (contents.steps[arrival.record] or 0) * factor
+    told = contents.steps[arrival.record]
+    if step is None and told is not None:
+        step = told * factor
+    elif arrival.growing and told is not None and told * factor != step:
+        raise NotYet("the file has been begun again", arrival.files[0].path)
     if time_ is None:
         time_ = contents.times[arrival.record]
     return msgspec.structs.replace(arrival, step=step, time=time_)
 
 
 def _chosen(
-    contents: Contents, file: FileId, watch: WatchSpec, several: bool
+    contents: Contents, file: FileId, watch: WatchSpec
 ) -> Iterator[tuple[FieldInfo, str, FieldSpec]]:
     """Fields to judge, with the names they have in the log and their settings."""
     leaves = [f.name.rsplit("/", 1)[-1] for f in contents.fields]
@@ -283,13 +320,15 @@ def _chosen(
 
 
 def _with_companions(
-    found: tuple[Arrival, ...], beside: tuple[Arrival, ...]
+    found: tuple[Arrival, ...], beside: tuple[Arrival, ...], *, stepped: bool
 ) -> tuple[Arrival, ...]:
-    """Each checkpoint with the companion files of its step (those without a step go with all)."""
+    """Each checkpoint with the companion files of its step; those without a step go with all. A
+    checkpoint whose own companion has not come is not complete and left out."""
     out = []
     for arrival in found:
-        more = tuple(f for b in beside if b.step is None or b.step == arrival.step for f in b.files)
-        out.append(msgspec.structs.replace(arrival, files=arrival.files + more))
+        more = tuple(f for b in beside if not stepped or b.step == arrival.step for f in b.files)
+        if more or not stepped:
+            out.append(msgspec.structs.replace(arrival, files=arrival.files + more))
     return tuple(out)
 
 

@@ -16,6 +16,7 @@ from probes.errors import NotYet, ReadError, Refused
 from probes.wire import Done, FileId, Secured, StopFile
 
 MARKER = ".stepwarden-pin"
+_MAKING = ".making"
 _CHUNK = 8 << 20
 # FICLONE of linux/fs.h: share blocks between two files (btrfs, XFS, bcachefs).
 _CLONE = 0x40049409
@@ -29,18 +30,18 @@ def secure(files: Sequence[FileId], folder: str, allow_link: bool) -> Secured:
     file is no longer the one meant, Refused where the folder exists, ReadError where it fails.
     """
     target = Path(folder)
-    if target.exists():
+    if target.exists() or target.is_symlink():
         raise Refused("exists already", folder)
-    making = target.with_name(f".{target.name}.making")
+    making = target.with_name(f".{target.name}{_MAKING}")
     try:
-        shutil.rmtree(making, ignore_errors=True)
+        _sweep(target.parent)
         making.mkdir(parents=True)
         (making / MARKER).touch()
         methods: set[Literal["link", "reflink", "copy"]] = set()
         digest, size, names = hashlib.sha256(), 0, _names(files)
         for file, name in zip(files, names, strict=True):
             _same(file)
-            methods.add(_keep(file.path, making / name, allow_link))
+            methods.add(_keep(file, making / name, allow_link))
             _same(file)
             size += _digest(making / name, digest)
         _sync(making)
@@ -81,12 +82,16 @@ def _same(file: FileId) -> None:
         raise NotYet("the file has been written again", file.path)
 
 
-def _keep(source: str, target: Path, allow_link: bool) -> Literal["link", "reflink", "copy"]:
+def _keep(file: FileId, target: Path, allow_link: bool) -> Literal["link", "reflink", "copy"]:
     if allow_link:
         with contextlib.suppress(OSError):
-            os.link(os.path.realpath(source), target)
+            os.link(os.path.realpath(file.path), target)
+            if os.stat(target).st_ino != file.inode:
+                raise NotYet("the file has been written again", file.path)
             return "link"
-    with open(source, "rb", buffering=0) as old, open(target, "xb", buffering=0) as new:
+    with open(file.path, "rb", buffering=0) as old, open(target, "xb", buffering=0) as new:
+        if os.fstat(old.fileno()).st_ino != file.inode:
+            raise NotYet("the file has been written again", file.path)
         method: Literal["reflink", "copy"] = "copy"
         try:
             fcntl.ioctl(new.fileno(), _CLONE, old.fileno())
@@ -97,8 +102,6 @@ def _keep(source: str, target: Path, allow_link: bool) -> Literal["link", "refli
                 while view:
                     view = view[new.write(view) or 0 :]
         os.fsync(new.fileno())
-        # What was copied will not be read again soon: leave the memory to the solver.
-        os.posix_fadvise(new.fileno(), 0, 0, os.POSIX_FADV_DONTNEED)
     return method
 
 
@@ -108,7 +111,22 @@ def _digest(path: Path, digest: hashlib._Hash) -> int:
         while block := file.read(_CHUNK):
             digest.update(block)
             size += len(block)
+        # It will not be read again soon: leave the memory to the solver.
+        os.posix_fadvise(file.fileno(), 0, 0, os.POSIX_FADV_DONTNEED)
     return size
+
+
+def _sweep(parent: Path) -> None:
+    """Remove what a process that was killed left half made. Guard's lock means that nobody else
+    is making anything here."""
+    for left in parent.glob(f".*{_MAKING}"):
+        if left.is_dir() and not left.is_symlink() and _ours(left):
+            shutil.rmtree(left, ignore_errors=True)
+
+
+def _ours(folder: Path) -> bool:
+    """Whether `secure` made it: by its marker, or empty, as a kill may leave it at either end."""
+    return (folder / MARKER).is_file() or not any(folder.iterdir())
 
 
 def _sync(folder: Path) -> None:
@@ -122,12 +140,17 @@ def _sync(folder: Path) -> None:
 def drop(folder: str) -> Done:
     """Remove a folder that `secure` made. Raises Refused for any other, ReadError on failure."""
     path = Path(folder)
-    if not path.exists():
-        return Done(detail="was not there")
-    if path.is_symlink() or not (path / MARKER).is_file():
-        raise Refused("is no folder of ours", folder)
     try:
-        shutil.rmtree(path)
+        _sweep(path.parent)
+        if not path.exists():
+            return Done(detail="was not there")
+        if path.is_symlink() or not path.is_dir() or not _ours(path):
+            raise Refused("is no folder of ours", folder)
+        # The marker goes last, so that a removal that was cut off can be taken up again.
+        for kept in sorted(path.iterdir(), key=lambda p: p.name == MARKER):
+            kept.unlink()
+        path.rmdir()
+        _sync(path.parent)
     except OSError as error:
         raise ReadError(f"cannot be removed ({error.strerror or error})", folder) from error
     return Done(detail="removed")

@@ -25,6 +25,18 @@ Reason = Literal["writing", "parts", "held", "refused", "broken", "empty"]
 
 # A first group of several files is taken as whole after this many quiet times.
 _PATIENT = 2.0
+# Longest time, in seconds and in quiet times, that a file still settling holds back later ones.
+_HOLD_BACK = 2.0
+_HOLD_BACK_QUIETS = 3.0
+# A file at rest that is still incomplete after so long will not be completed, seconds.
+_HOPELESS = 60.0
+# First and longest pause before a file that could not be opened is tried again unchanged, seconds.
+_RETRY = 0.1
+_RETRY_MOST = 5.0
+# An unfinished step holds back later ones until it has not changed for this long: seconds, quiet
+# times.
+_HELD_BACK = 2.0
+_HELD_BACK_QUIETS = 5.0
 
 
 def content_key(*facts: object) -> str:
@@ -45,11 +57,28 @@ def file_id(seen: Seen, pattern: Pattern) -> FileId:
 
 @dataclass
 class _File:
-    """What is known of a file whose step does not stand in its name."""
+    """What is known of a file whose step does not stand in its name.
+
+    generation: how often the file was cut and begun again under its inode. keys: per record its
+    content key and when it was first seen, ns.
+    """
 
     identity: tuple[int, int, int]
     contents: Contents
+    generation: int = 0
     keys: dict[int, tuple[str, int]] = field(default_factory=dict)
+
+
+@dataclass
+class _Closed:
+    """A file that could not be described as it is. since, again: wall-clock seconds."""
+
+    identity: tuple[int, int, int]
+    reason: Reason
+    detail: str
+    since: float
+    pause: float
+    again: float
 
 
 @dataclass
@@ -62,7 +91,9 @@ class Grouper:
     known: set[str] = field(default_factory=set)
     _slots: set[Slot] = field(default_factory=set)
     _files: dict[str, _File] = field(default_factory=dict)
+    _closed: dict[str, _Closed] = field(default_factory=dict)
     _since: dict[str, float] = field(default_factory=dict)
+    _made: dict[int, tuple[list[Seen], Arrival]] = field(default_factory=dict)
 
     def group(
         self, seen: Iterable[Seen], complete: Callable[[Seen], bool], quiet: float, wall: float
@@ -82,11 +113,54 @@ class Grouper:
                 stepped[one.match.step][self._slot(one)] = one
         for one in unnamed:
             self._look_inside(one, complete(one), stepped, arrivals, pending, wall)
-        self._files = {p: f for p, f in self._files.items() if p in {s.path for s in unnamed}}
+        there = {one.path for one in unnamed}
+        self._files = {p: f for p, f in self._files.items() if p in there}
+        self._closed = {p: c for p, c in self._closed.items() if p in there}
         self._by_step(stepped, complete, quiet, wall, arrivals, pending)
+        self._made = {step: made for step, made in self._made.items() if step in stepped}
         new = {a.key: a for a in arrivals if a.key not in self.known}
         self._since = {p.key: p.since for p in pending}
-        return sorted(new.values(), key=_order), pending
+        ready = self._in_turn(new.values(), stepped, unnamed, pending, complete, quiet, wall)
+        return sorted(ready, key=_order), pending
+
+    def _in_turn(
+        self,
+        arrivals: Iterable[Arrival],
+        stepped: dict[int, dict[Slot, Seen]],
+        unnamed: list[Seen],
+        pending: list[Pending],
+        complete: Callable[[Seen], bool],
+        quiet: float,
+        wall: float,
+    ) -> list[Arrival]:
+        """Without those that must wait a little for an earlier one: some files are known to be
+        complete at once, by an event, and others only when they have been quiet for a while."""
+        patience = max(_HOLD_BACK, _HOLD_BACK_QUIETS * quiet)
+        recent = [p for p in pending if p.reason == "writing" and wall - p.since < patience]
+        steps = {p.step for p in recent if p.step is not None}
+        factor = self.spec.step_factor
+        first_step = min(
+            (
+                step
+                for step, files in stepped.items()
+                if step * factor in steps and not all(complete(one) for one in files.values())
+            ),
+            default=None,
+        )
+        paths = {p.path for p in recent}
+        first_change = min(
+            (one.mtime_ns for one in unnamed if one.path in paths and not complete(one)),
+            default=None,
+        )
+
+        def waits(arrival: Arrival) -> bool:
+            if arrival.growing:
+                return False
+            if first_step is not None and arrival.step is not None:
+                return arrival.step > first_step * factor
+            return first_change is not None and arrival.mtime_ns > first_change
+
+        return [a for a in arrivals if not waits(a)]
 
     def _slot(self, one: Seen) -> Slot:
         return one.pattern, one.match.part, one.match.field
@@ -96,7 +170,10 @@ class Grouper:
     ) -> Pending:
         key = content_key(reason, one.path, step, one.inode)
         since = self._since.setdefault(key, wall)
-        return Pending(key=key, path=one.path, reason=reason, detail=detail, since=since, step=step)
+        solver_step = step * self.spec.step_factor if step is not None else None
+        return Pending(
+            key=key, path=one.path, reason=reason, detail=detail, since=since, step=solver_step
+        )
 
     # --- steps in names -----------------------------------------------------------------
 
@@ -128,7 +205,7 @@ class Grouper:
             if not single:
                 self._slots |= set(files)
             done[step] = self._arrival(step, files)
-        arrivals += done.values()
+        arrivals += self._in_order(done, unfinished, quiet, wall)
         latest = max(done, default=None)
         for step, files_at in unfinished.items():
             overtaken = latest is not None and step < latest
@@ -139,6 +216,21 @@ class Grouper:
             else:
                 detail = "still being written, or not all files are there"
                 pending.append(self._pend(files_at[0], "writing", detail, wall, step))
+
+    @staticmethod
+    def _in_order(
+        done: dict[int, Arrival], unfinished: dict[int, list[Seen]], quiet: float, wall: float
+    ) -> list[Arrival]:
+        """Complete steps, those behind one that is just being finished held back: a later file may
+        be known to be complete (by an event) before an earlier one is."""
+        patience = max(_HELD_BACK, _HELD_BACK_QUIETS * quiet)
+        at_work = [
+            step
+            for step, files in unfinished.items()
+            if wall - max(one.mtime_ns for one in files) / 1e9 < patience
+        ]
+        first = min(at_work, default=None)
+        return [a for step, a in done.items() if first is None or step < first]
 
     def _learn(
         self,
@@ -170,13 +262,18 @@ class Grouper:
 
     def _arrival(self, step: int, files: dict[Slot, Seen]) -> Arrival:
         ordered = [files[slot] for slot in sorted(files)]
+        made = self._made.get(step)
+        if made is not None and made[0] == ordered:
+            return made[1]
         facts = [(*one.identity, one.match.part, one.match.field) for one in ordered]
-        return Arrival(
+        arrival = Arrival(
             key=content_key(step, facts),
             files=tuple(file_id(one, self.patterns[one.pattern]) for one in ordered),
             step=step * self.spec.step_factor,
             mtime_ns=max(one.mtime_ns for one in ordered),
         )
+        self._made[step] = ordered, arrival
+        return arrival
 
     # --- steps in contents --------------------------------------------------------------
 
@@ -191,25 +288,11 @@ class Grouper:
     ) -> None:
         file = self._files.get(one.path)
         if file is None or file.identity != one.identity:
-            try:
-                contents = self.describe(one.path)
-            except Held as error:
-                pending.append(self._pend(one, "held", str(error), wall))
+            contents = self._described(one, settled, wall)
+            if isinstance(contents, _Closed):
+                pending.append(self._pend(one, contents.reason, contents.detail, wall))
                 return
-            except NotYet as error:
-                pending.append(self._pend(one, "writing", str(error), wall))
-                return
-            except Refused as error:
-                pending.append(self._pend(one, "refused", str(error), wall))
-                return
-            except ReadError as error:
-                pending.append(self._pend(one, "broken", str(error), wall))
-                return
-            same = file is not None and file.identity[0] == one.inode
-            keys = file.keys if file is not None and same else {}
-            if file is not None and contents.records < file.contents.records:
-                keys = {}
-            file = self._files[one.path] = _File(one.identity, contents, keys)
+            file = self._files[one.path] = self._taken_up(one, contents, file)
         if file.contents.growing:
             arrivals += self._records(one, file, settled, wall)
             return
@@ -232,6 +315,55 @@ class Grouper:
             )
         )
 
+    def _described(self, one: Seen, settled: bool, wall: float) -> Contents | _Closed:
+        """The file's contents, or why there are none. An unchanged file is tried ever less often,
+        so that a writer that keeps readers out is not pestered."""
+        before = self._closed.get(one.path)
+        if before is not None and before.identity != one.identity:
+            before = None
+        if before is not None and (before.reason in ("refused", "broken") or wall < before.again):
+            return before
+        reason: Reason
+        try:
+            contents = self.describe(one.path)
+        except Held as error:
+            reason, detail = "held", str(error)
+        except NotYet as error:
+            stuck = before is not None and settled and wall - before.since > _HOPELESS
+            reason, detail = "broken" if stuck else "writing", str(error)
+            if one.size == 0:
+                reason = "empty"
+        except Refused as error:
+            reason, detail = "refused", str(error)
+        except ReadError as error:
+            reason, detail = "broken", str(error)
+        else:
+            self._closed.pop(one.path, None)
+            return contents
+        since = before.since if before is not None else wall
+        pause = min(2.0 * before.pause, _RETRY_MOST) if before is not None else _RETRY
+        closed = _Closed(one.identity, reason, detail, since, pause, wall + pause)
+        self._closed[one.path] = closed
+        return closed
+
+    def _taken_up(self, one: Seen, contents: Contents, old: _File | None) -> _File:
+        """The file as it is now, with what is known of the records it already had."""
+        if old is not None and old.identity[0] == one.inode:
+            if contents.records >= old.contents.records:
+                return _File(one.identity, contents, old.generation, old.keys)
+            return _File(one.identity, contents, old.generation + 1)
+        # Seen for the first time by this process: the log tells which generation was the last.
+        generation = 0
+        if contents.growing and contents.records:
+            while self._record_key(one, contents, 0, generation + 1) in self.known:
+                generation += 1
+        return _File(one.identity, contents, generation)
+
+    @staticmethod
+    def _record_key(one: Seen, contents: Contents, record: int, generation: int) -> str:
+        clock = contents.steps[record], contents.times[record]
+        return content_key(one.inode, record, *clock, generation)
+
     def _records(self, one: Seen, file: _File, settled: bool, wall: float) -> list[Arrival]:
         """Records that are whole: the last one only when the file is at rest, since its room may
         have been made before its numbers were written."""
@@ -239,9 +371,10 @@ class Grouper:
         out = []
         for record in range(contents.records if settled else contents.records - 1):
             step, time = contents.steps[record], contents.times[record]
-            key, since = file.keys.setdefault(
-                record, (content_key(one.inode, record, step), int(wall * 1e9))
-            )
+            if record not in file.keys:
+                key = self._record_key(one, contents, record, file.generation)
+                file.keys[record] = key, int(wall * 1e9)
+            key, since = file.keys[record]
             if key not in self.known:
                 out.append(
                     Arrival(

@@ -10,7 +10,7 @@ LOCAL_QUIET = 0.2
 # Twice the three seconds for which attributes of files are commonly cached at least.
 NETWORK_QUIET = 6.0
 _NETWORK = re.compile(
-    r"^(nfs\d?|cifs|smb3?|9p|afs|lustre|gpfs|beegfs|ceph|glusterfs|orangefs|pvfs2|panfs|fuse\..*|fuse)$"
+    r"^(nfs\d?|cifs|smb3?|9p|afs|lustre|gpfs|beegfs|ceph|glusterfs|orangefs|pvfs2|panfs|virtiofs|vboxsf|fuse\..*|fuse)$"
 )
 
 
@@ -69,4 +69,4 @@ class Settling:
     def forget_all_but(self, paths: set[str]) -> None:
         """Drop what is remembered of files that are gone."""
         self._first = {p: v for p, v in self._first.items() if p in paths}
-        self._hurried = {p: v for p, v in self._hurried.items() if p in paths or v is None}
+        self._hurried = {p: v for p, v in self._hurried.items() if p in paths}

@@ -6,6 +6,7 @@ Our own reading makes "opened" and "closed without writing" events, which must n
 
 from __future__ import annotations
 
+import os
 import threading
 from collections.abc import Iterable
 from typing import TYPE_CHECKING
@@ -27,7 +28,7 @@ class Wakeups:
         self._lock = threading.Lock()
         self._closed: set[str] = set()
         self._observer: BaseObserver | None = None
-        self._folders: tuple[str, ...] = ()
+        self._folders: tuple[tuple[str, int], ...] = ()
         self.reason = "not started"
 
     @property
@@ -40,8 +41,9 @@ class Wakeups:
         self.reason = reason
 
     def watch(self, folders: Iterable[str]) -> None:
-        """Watch these folders instead of the present ones, if they are others."""
-        wanted = tuple(folders)
+        """Watch these folders instead of the present ones, if they are others: a folder that was
+        removed and made again under its name is another, and sends nothing to the old watch."""
+        wanted = tuple((folder, inode) for folder in folders if (inode := _inode(folder)))
         if wanted == self._folders and (self.live or self.reason):
             return
         self.stop()
@@ -53,13 +55,13 @@ class Wakeups:
             self.reason = f"there are {len(wanted)} folders to watch"
             return
         try:
-            self._start(wanted)
+            self._start([folder for folder, _ in wanted])
         except (OSError, RuntimeError, ImportError) as error:
             self.stop()
             self._folders = wanted
             self.reason = f"the system gives no more watches ({error})"
 
-    def _start(self, folders: tuple[str, ...]) -> None:
+    def _start(self, folders: list[str]) -> None:
         from watchdog.events import (
             FileClosedEvent,
             FileCreatedEvent,
@@ -114,3 +116,11 @@ class Wakeups:
         self._folders = ()
         if observer is not None:
             observer.stop()
+
+
+def _inode(folder: str) -> int:
+    """0 where it is not there."""
+    try:
+        return os.stat(folder).st_ino
+    except OSError:
+        return 0

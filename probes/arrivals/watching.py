@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import os
 import time
 from collections.abc import Iterable
 from pathlib import Path
@@ -32,8 +33,16 @@ class Watching:
     """Watches the files of one specification."""
 
     def __init__(
-        self, folder: str, spec: SnapshotSpec, describe: Describe, known: Iterable[str] = ()
+        self,
+        folder: str,
+        spec: SnapshotSpec,
+        describe: Describe,
+        known: Iterable[str] = (),
+        *,
+        events: bool = True,
     ) -> None:
+        """describe: contents of a file by its path. known: keys never to be offered. events: have
+        the file system wake a waiting look, where it can."""
         self._patterns = tuple(Pattern.of(text, folder) for text in spec.pattern)
         self._listing = Listing(self._patterns, time.monotonic)
         self._grouper = Grouper(self._patterns, spec, describe, set(known))
@@ -42,6 +51,7 @@ class Watching:
         quiet = NETWORK_QUIET if self._network else LOCAL_QUIET
         self._settling = Settling(spec.settle_seconds if spec.settle_seconds >= 0 else quiet)
         self._wakeups = Wakeups()
+        self._events = events and not self._network
         if self._network:
             self._wakeups.refuse(f"files on {kind} change without events")
 
@@ -66,10 +76,10 @@ class Watching:
     def _once(self) -> Looked:
         # Events are taken before the listing: one that comes in between wakes the next look.
         closed = self._wakeups.closed()
-        for path in closed:
-            self._settling.closed(path)
         seen = self._listing.look()
-        if not self._network:
+        for path in closed.intersection(one.path for one in seen):
+            self._settling.closed(path)
+        if self._events:
             self._wakeups.watch(self._listing.folders())
         now, wall = time.monotonic(), time.time()
         calm = {s.path: self._settling.complete(s.path, s.identity, now, wall) for s in seen}
@@ -98,4 +108,4 @@ def _kind_of(folder: str) -> str:
         mounts = Path("/proc/self/mountinfo").read_text(encoding="utf-8", errors="replace")
     except OSError:
         return ""
-    return mount_kind(folder, mounts)
+    return mount_kind(os.path.realpath(folder), mounts)
