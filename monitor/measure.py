@@ -11,6 +11,7 @@ from dataclasses import dataclass
 
 import msgspec
 import numpy as np
+from numpy.typing import NDArray
 
 from monitor.config import Settings
 from monitor.growthlog.records import Evidence
@@ -19,7 +20,7 @@ from monitor.measuring.memory import Memory, Scaled, memories, restore, store
 from monitor.measuring.placing import CloseUpCrops, Crops, TileGrid
 from monitor.measuring.reading import Reading, read_change, read_channel, tile_line
 from monitor.measuring.tracking import find_modes
-from probes.wire import BlockReply, Crop, Sketched
+from probes.wire import BlockReply, Crop, Packed, Sketched
 
 __all__ = ["CloseUpCrops", "Measured", "Measurer", "TileGrid", "resketch_distance"]
 
@@ -45,6 +46,7 @@ class _Clock(msgspec.Struct):
     time: float | None
     seen: int
     watched: tuple[Crop, ...]
+    crops: tuple[Crop, ...]
 
 
 class Measurer:
@@ -147,9 +149,10 @@ class Measurer:
         return reading
 
     def _remember(self, memory: Memory, reading: Reading, change: Scaled) -> None:
-        memory.differences.append(change)
-        memory.tile_levels.append(reading.tile_levels)
-        memory.tile_floors.append(reading.tile_floors)
+        # What is kept is rounded as it is stored, so that a restored memory is the same.
+        memory.differences.append(change.single())
+        memory.tile_levels.append(_single(reading.tile_levels))
+        memory.tile_floors.append(_single(reading.tile_floors))
         while len(memory.differences) > self._settings.estimate.krylov + 1:
             memory.differences.popleft()
         while len(memory.tile_levels) > self._settings.estimate.history:
@@ -168,7 +171,11 @@ class Measurer:
 
     def dump(self) -> dict[str, bytes]:
         """Everything needed to go on in another process, by name."""
-        clock = _Clock(list(self._steps), self._time, self._seen, self._watched)
+        crops = tuple(
+            Crop(field=name, part=part, lo=lo, hi=lo, values=Packed.of(values))
+            for (name, part, lo), values in self._crops.items()
+        )
+        clock = _Clock(list(self._steps), self._time, self._seen, self._watched, crops)
         return {
             "clock": msgspec.msgpack.encode(clock),
             **{f"channel {name}": store(memory) for name, memory in self._memories.items()},
@@ -181,10 +188,17 @@ class Measurer:
         clock = msgspec.msgpack.decode(payload["clock"], type=_Clock)
         self._steps.extend(clock.steps)
         self._time, self._seen, self._watched = clock.time, clock.seen, clock.watched
+        self._crops = {
+            (c.field, c.part, c.lo): c.values.array() for c in clock.crops if c.values is not None
+        }
         for name, data in payload.items():
             if name.startswith("channel "):
                 memory = restore(data, self._settings.sketch)
                 self._memories[memory.name] = memory
+
+
+def _single(values: NDArray[np.float64]) -> NDArray[np.float64]:
+    return values.astype(np.float32).astype(np.float64)
 
 
 def _by_channel(blocks: tuple[BlockReply, ...]) -> dict[str, list[BlockReply]]:

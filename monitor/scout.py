@@ -151,7 +151,7 @@ def _look(
 ) -> Sight:
     """Ask for the last file but one where there are several: the last may still be written."""
     name = group.names[-2] if len(group.names) > 2 else group.names[-1]
-    reply = ask(Examine(path=str(folder / name)))
+    reply = ask(Examine(path=str(folder.resolve() / name)))
     cadence = _cadence(group, times)
     if isinstance(reply, Examined):
         return Sight(group, cadence, reply)

@@ -133,6 +133,7 @@ class Session:
         self._pending: tuple[Pending, ...] = ()
         self._wakeup = ""
         self._caught_up = False
+        self._blind = False
         self._failing = ""
         self._noted: set[str] = set()
         self._done = 0
@@ -227,8 +228,10 @@ class Session:
             settling = bool(arrivals) or any(p.reason == "writing" for p in self._pending)
             patience = SETTLING_LOCAL if self._wakeup == "events" else SETTLING_FAR
             waited = time.monotonic() - since
-            empty += 1
-            if (empty >= 2 and not settling) or waited > patience:
+            if not self._blind:
+                empty += 1
+            # What arrived and cannot be read yet is given up by `Reading`, in its own time.
+            if (empty >= 2 and not settling) or (waited > patience and not arrivals):
                 return
             if settling:
                 self._asking.pause(SHORTEST_LOOK)
@@ -246,6 +249,7 @@ class Session:
         return min(longest, max(SHORTEST_LOOK, (usual if usual is not None else 2.0) / 4.0))
 
     def _look(self, wait_s: float) -> tuple[Arrival, ...]:
+        self._blind = True
         try:
             reply = self._asking.ask_freely(Look(wait_s=wait_s), wait_s + seconds_for(0))
         except ChildError as error:
@@ -258,6 +262,7 @@ class Session:
             self._journal.trouble(f"looking for snapshots: {where}{why}", once=True)
             self._asking.pause(TROUBLE_PAUSE)
             return ()
+        self._blind = False
         self._pending = reply.pending
         if reply.wakeup != self._wakeup:
             self._wakeup = reply.wakeup

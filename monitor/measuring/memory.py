@@ -39,6 +39,10 @@ class Scaled:
             exponent,
         )
 
+    def single(self) -> Scaled:
+        """Rounded to single precision, as differences are kept and stored."""
+        return _restored(_columns(self, single=True))
+
 
 @dataclass(frozen=True)
 class Place:
@@ -140,6 +144,15 @@ class _StoredColumns(msgspec.Struct, frozen=True):
     exponent: int
 
 
+class _StoredTrack(msgspec.Struct, frozen=True, array_like=True):
+    real: float
+    imaginary: float
+    size: float
+    basis: Packed
+    held: int
+    grown: float
+
+
 class _StoredMemory(msgspec.Struct, frozen=True):
     name: str
     places: tuple[tuple[str, tuple[int, ...], tuple[int, ...], int, int], ...]
@@ -147,6 +160,7 @@ class _StoredMemory(msgspec.Struct, frozen=True):
     differences: tuple[_StoredColumns, ...]
     levels: Packed
     floors: Packed
+    tracks: dict[str, tuple[tuple[_StoredTrack, ...], ...]]
 
 
 def _columns(scaled: Scaled, single: bool) -> _StoredColumns:
@@ -172,10 +186,10 @@ def _history(rows: deque[Array], tiles: int) -> Packed:
 
 
 def store(memory: Memory) -> bytes:
-    """Everything but the tracked Ritz vectors, which are found again from the next snapshots.
+    """Everything, so that what is restored goes on exactly as the original.
 
-    The last sketch keeps its precision, since the next difference is taken from it; differences
-    and levels are kept as float32.
+    The last sketch keeps its precision, since the next difference is taken from it; differences,
+    levels and vectors are single precision in memory too.
     """
     return msgspec.msgpack.encode(
         _StoredMemory(
@@ -188,8 +202,21 @@ def store(memory: Memory) -> bytes:
             tuple(_columns(d, single=True) for d in memory.differences),
             _history(memory.tile_levels, memory.tiles),
             _history(memory.tile_floors, memory.tiles),
+            {
+                view: tuple(tuple(_stored_track(t) for t in now) for now in track)
+                for view, track in memory.tracks.items()
+            },
         )
     )
+
+
+def _stored_track(t: Tracked) -> _StoredTrack:
+    return _StoredTrack(t.value.real, t.value.imag, t.size, Packed.of(t.basis), t.held, t.grown)
+
+
+def _track(t: _StoredTrack) -> Tracked:
+    basis = t.basis.array().astype(np.float32)
+    return Tracked(complex(t.real, t.imaginary), t.size, basis, held=t.held, grown=t.grown)
 
 
 def restore(data: bytes, sketch: SketchSpec) -> Memory:
@@ -206,6 +233,10 @@ def restore(data: bytes, sketch: SketchSpec) -> Memory:
         deque(_restored(d) for d in stored.differences),
         deque(_rows(stored.levels)),
         deque(_rows(stored.floors)),
+        {
+            view: deque([_track(t) for t in now] for now in track)
+            for view, track in stored.tracks.items()
+        },
     )
 
 

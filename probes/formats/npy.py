@@ -2,7 +2,9 @@
 
 from __future__ import annotations
 
+import io
 import os
+import struct
 from collections.abc import Iterator
 from io import BufferedReader
 from pathlib import Path
@@ -29,13 +31,20 @@ def read_header(file: IO[bytes], name: str, where: str) -> FieldInfo:
     """
     try:
         version = npy_format.read_magic(file)
+        size = struct.Struct("<H" if version == (1, 0) else "<I")
+        start = file.read(size.size)
+        if len(start) < size.size:
+            raise NotYet("the header ends early", where)
+        if size.unpack(start)[0] > _LONGEST_HEADER:
+            raise ReadError(f"damaged header (of {size.unpack(start)[0]} bytes)", where)
+        header = io.BytesIO(start + file.read(size.unpack(start)[0]))
         read = {
             (1, 0): npy_format.read_array_header_1_0,
             (2, 0): npy_format.read_array_header_2_0,
         }.get(version)
         if read is None:
             raise Refused(f"version {version[0]}.{version[1]} of the format is not known", where)
-        shape, fortran, dtype = read(file, max_header_size=_LONGEST_HEADER)
+        shape, fortran, dtype = read(header, max_header_size=_LONGEST_HEADER)
     except ValueError as error:
         if "EOF" in str(error):
             raise NotYet("the header ends early", where) from error
