@@ -25,6 +25,7 @@ from probes.arrivals.watching import Watching
 from probes.errors import (
     ArrivalError,
     ChildError,
+    Held,
     NotYet,
     ReadError,
     Refused,
@@ -276,7 +277,10 @@ def _short_is_broken(file: FileId) -> Iterator[None]:
     """What is incomplete although nobody has written to it for a minute will stay so."""
     try:
         yield
+    except Held:
+        raise
     except NotYet as error:
+        _unchanged(file, growing=False)
         calm = time.time() - file.mtime_ns / 1e9
         if calm < _CALM:
             raise

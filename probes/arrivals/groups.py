@@ -25,18 +25,16 @@ Reason = Literal["writing", "parts", "held", "refused", "broken", "empty"]
 
 # A first group of several files is taken as whole after this many quiet times.
 _PATIENT = 2.0
-# Longest time, in seconds and in quiet times, that a file still settling holds back later ones.
-_HOLD_BACK = 2.0
-_HOLD_BACK_QUIETS = 3.0
+# An unfinished snapshot holds back later ones until it has not changed for this long (seconds,
+# quiet times), and for so many seconds at most if it never comes to rest.
+_HELD_BACK = 2.0
+_HELD_BACK_QUIETS = 5.0
+_HELD_BACK_MOST = 60.0
 # A file at rest that is still incomplete after so long will not be completed, seconds.
 _HOPELESS = 60.0
 # First and longest pause before a file that could not be opened is tried again unchanged, seconds.
 _RETRY = 0.1
 _RETRY_MOST = 5.0
-# An unfinished step holds back later ones until it has not changed for this long: seconds, quiet
-# times.
-_HELD_BACK = 2.0
-_HELD_BACK_QUIETS = 5.0
 
 
 def content_key(*facts: object) -> str:
@@ -133,23 +131,31 @@ class Grouper:
         quiet: float,
         wall: float,
     ) -> list[Arrival]:
-        """Without those that must wait a little for an earlier one: some files are known to be
-        complete at once, by an event, and others only when they have been quiet for a while."""
-        patience = max(_HOLD_BACK, _HOLD_BACK_QUIETS * quiet)
-        recent = [p for p in pending if p.reason == "writing" and wall - p.since < patience]
+        """Without those that must wait for an earlier one that is just being finished: a later
+        file may be known to be complete (by an event) before an earlier one is."""
+        patience = max(_HELD_BACK, _HELD_BACK_QUIETS * quiet)
+        recent = [
+            p
+            for p in pending
+            if p.reason in ("writing", "parts") and wall - p.since < _HELD_BACK_MOST
+        ]
         steps = {p.step for p in recent if p.step is not None}
+        paths = {p.path for p in recent}
         factor = self.spec.step_factor
+
+        def at_work(files: Iterable[Seen]) -> bool:
+            return wall - max(one.mtime_ns for one in files) / 1e9 < patience
+
         first_step = min(
-            (
-                step
-                for step, files in stepped.items()
-                if step * factor in steps and not all(complete(one) for one in files.values())
-            ),
+            (s for s, files in stepped.items() if s * factor in steps and at_work(files.values())),
             default=None,
         )
-        paths = {p.path for p in recent}
         first_change = min(
-            (one.mtime_ns for one in unnamed if one.path in paths and not complete(one)),
+            (
+                one.mtime_ns
+                for one in unnamed
+                if one.path in paths and not complete(one) and at_work([one])
+            ),
             default=None,
         )
 
@@ -205,7 +211,7 @@ class Grouper:
             if not single:
                 self._slots |= set(files)
             done[step] = self._arrival(step, files)
-        arrivals += self._in_order(done, unfinished, quiet, wall)
+        arrivals += done.values()
         latest = max(done, default=None)
         for step, files_at in unfinished.items():
             overtaken = latest is not None and step < latest
@@ -216,21 +222,6 @@ class Grouper:
             else:
                 detail = "still being written, or not all files are there"
                 pending.append(self._pend(files_at[0], "writing", detail, wall, step))
-
-    @staticmethod
-    def _in_order(
-        done: dict[int, Arrival], unfinished: dict[int, list[Seen]], quiet: float, wall: float
-    ) -> list[Arrival]:
-        """Complete steps, those behind one that is just being finished held back: a later file may
-        be known to be complete (by an event) before an earlier one is."""
-        patience = max(_HELD_BACK, _HELD_BACK_QUIETS * quiet)
-        at_work = [
-            step
-            for step, files in unfinished.items()
-            if wall - max(one.mtime_ns for one in files) / 1e9 < patience
-        ]
-        first = min(at_work, default=None)
-        return [a for step, a in done.items() if first is None or step < first]
 
     def _learn(
         self,

@@ -22,7 +22,7 @@ class Folder:
     """Files by hand in front of a grouper. contents: what a file says, or the error it gives."""
 
     patterns: tuple[str, ...]
-    spec: SnapshotSpec = SnapshotSpec(pattern=())
+    spec: SnapshotSpec = field(default_factory=lambda: SnapshotSpec(pattern=()))
     known: set[str] = field(default_factory=set)
     files: dict[str, Seen] = field(default_factory=dict)
     contents: dict[str, Contents | ReadError] = field(default_factory=dict)
@@ -181,11 +181,19 @@ def test_a_settling_file_holds_back_later_ones_for_a_while() -> None:
     assert folder.take() == []
     folder.put("h_10.npy", age=0.1, inode=1000)
     assert folder.take() == [10, 20]
-    folder.put("h_30.npy", settled=False)
+    folder.put("h_30.npy", age=0.0, settled=False)
     folder.put("h_40.npy")
     assert folder.take() == []
     folder.wall += 2.1
     assert folder.take() == [40]
+    folder.put("h_60.npy")
+    for second in range(59):
+        folder.put("h_50.npy", inode=50, size=second, age=0.0, settled=False)
+        assert folder.take() == []
+        folder.wall += 1.0
+    folder.wall += 1.0
+    folder.put("h_50.npy", inode=50, size=99, age=0.0, settled=False)
+    assert folder.take() == [60]
 
 
 def test_settling_files_without_steps_keep_the_order_of_writing() -> None:
