@@ -181,9 +181,10 @@ class Child:
                     blocks += found
                     crops += cut
                     told += remarks
-        # What was read may have been changing under us: only unchanged files count.
+        # What was read may have been changing under us: only unchanged files count, but for
+        # records of a growing file that have others behind them.
         for file in arrival.files:
-            _unchanged(file, arrival.growing)
+            _unchanged(file, arrival.growing and arrival.record < contents.records - 1)
         missing = set(self._watch.fields) - {b.field.split("[")[0] for b in blocks}
         if missing:
             there = ", ".join(sorted({b.field for b in blocks})) or "none"

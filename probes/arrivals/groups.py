@@ -14,6 +14,7 @@ from typing import Literal
 
 from probes.arrivals.listing import Seen
 from probes.arrivals.patterns import Pattern
+from probes.arrivals.settled import Rest
 from probes.errors import Held, NotYet, ReadError, Refused
 from probes.snapshot import Contents
 from probes.spec import SnapshotSpec
@@ -94,11 +95,11 @@ class Grouper:
     _made: dict[int, tuple[list[Seen], Arrival]] = field(default_factory=dict)
 
     def group(
-        self, seen: Iterable[Seen], complete: Callable[[Seen], bool], quiet: float, wall: float
+        self, seen: Iterable[Seen], rest: Callable[[Seen], Rest], quiet: float, wall: float
     ) -> tuple[list[Arrival], list[Pending]]:
         """Arrivals not known yet, in step order, and what cannot be judged.
 
-        complete: whether a file is settled. wall: seconds since the epoch.
+        rest: how calm a file is. quiet: quiet time, s. wall: seconds since the epoch.
         """
         stepped: dict[int, dict[Slot, Seen]] = defaultdict(dict)
         arrivals: list[Arrival] = []
@@ -110,15 +111,15 @@ class Grouper:
             else:
                 stepped[one.match.step][self._slot(one)] = one
         for one in unnamed:
-            self._look_inside(one, complete(one), stepped, arrivals, pending, wall)
+            self._look_inside(one, rest(one), stepped, arrivals, pending, wall)
         there = {one.path for one in unnamed}
         self._files = {p: f for p, f in self._files.items() if p in there}
         self._closed = {p: c for p, c in self._closed.items() if p in there}
-        self._by_step(stepped, complete, quiet, wall, arrivals, pending)
+        self._by_step(stepped, rest, quiet, wall, arrivals, pending)
         self._made = {step: made for step, made in self._made.items() if step in stepped}
         new = {a.key: a for a in arrivals if a.key not in self.known}
         self._since = {p.key: p.since for p in pending}
-        ready = self._in_turn(new.values(), stepped, unnamed, pending, complete, quiet, wall)
+        ready = self._in_turn(new.values(), stepped, unnamed, pending, rest, quiet, wall)
         return sorted(ready, key=_order), pending
 
     def _in_turn(
@@ -127,7 +128,7 @@ class Grouper:
         stepped: dict[int, dict[Slot, Seen]],
         unnamed: list[Seen],
         pending: list[Pending],
-        complete: Callable[[Seen], bool],
+        rest: Callable[[Seen], Rest],
         quiet: float,
         wall: float,
     ) -> list[Arrival]:
@@ -154,7 +155,7 @@ class Grouper:
             (
                 one.mtime_ns
                 for one in unnamed
-                if one.path in paths and not complete(one) and at_work([one])
+                if one.path in paths and not rest(one) and at_work([one])
             ),
             default=None,
         )
@@ -186,7 +187,7 @@ class Grouper:
     def _by_step(
         self,
         stepped: dict[int, dict[Slot, Seen]],
-        complete: Callable[[Seen], bool],
+        rest: Callable[[Seen], Rest],
         quiet: float,
         wall: float,
         arrivals: list[Arrival],
@@ -196,10 +197,10 @@ class Grouper:
         done: dict[int, Arrival] = {}
         unfinished: dict[int, list[Seen]] = {}
         if not single and not self._slots:
-            self._learn(stepped, complete, quiet, wall)
+            self._learn(stepped, rest, quiet, wall)
         for step in sorted(stepped):
             files = stepped[step]
-            writing = [one for one in files.values() if not complete(one)]
+            writing = [one for one in files.values() if not rest(one)]
             if writing:
                 arrival_known = self._arrival(step, files).key in self.known
                 if not arrival_known:
@@ -215,7 +216,7 @@ class Grouper:
         latest = max(done, default=None)
         for step, files_at in unfinished.items():
             overtaken = latest is not None and step < latest
-            if overtaken and all(complete(one) for one in stepped[step].values()):
+            if overtaken and all(rest(one) for one in stepped[step].values()):
                 there, all_of = len(stepped[step]), max(len(self._slots), self.spec.parts)
                 detail = f"{there} of {all_of} files of step {step * self.spec.step_factor} came"
                 pending.append(self._pend(files_at[0], "parts", detail, wall, step))
@@ -226,7 +227,7 @@ class Grouper:
     def _learn(
         self,
         stepped: dict[int, dict[Slot, Seen]],
-        complete: Callable[[Seen], bool],
+        rest: Callable[[Seen], Rest],
         quiet: float,
         wall: float,
     ) -> None:
@@ -234,7 +235,7 @@ class Grouper:
         calm = [
             set(files)
             for step, files in stepped.items()
-            if all(complete(one) for one in files.values())
+            if all(rest(one) for one in files.values())
             and (
                 step < max(stepped)
                 or wall - max(one.mtime_ns for one in files.values()) / 1e9 >= _PATIENT * quiet
@@ -271,7 +272,7 @@ class Grouper:
     def _look_inside(
         self,
         one: Seen,
-        settled: bool,
+        calm: Rest,
         stepped: dict[int, dict[Slot, Seen]],
         arrivals: list[Arrival],
         pending: list[Pending],
@@ -279,15 +280,15 @@ class Grouper:
     ) -> None:
         file = self._files.get(one.path)
         if file is None or file.identity != one.identity:
-            contents = self._described(one, settled, wall)
+            contents = self._described(one, calm, wall)
             if isinstance(contents, _Closed):
                 pending.append(self._pend(one, contents.reason, contents.detail, wall))
                 return
             file = self._files[one.path] = self._taken_up(one, contents, file)
         if file.contents.growing:
-            arrivals += self._records(one, file, settled, wall)
+            arrivals += self._records(one, file, calm, wall)
             return
-        if not settled:
+        if not calm:
             pending.append(self._pend(one, "writing", "still being written", wall))
             return
         step, time = file.contents.steps[0], file.contents.times[0]
@@ -306,7 +307,7 @@ class Grouper:
             )
         )
 
-    def _described(self, one: Seen, settled: bool, wall: float) -> Contents | _Closed:
+    def _described(self, one: Seen, calm: Rest, wall: float) -> Contents | _Closed:
         """The file's contents, or why there are none. An unchanged file is tried ever less often,
         so that a writer that keeps readers out is not pestered."""
         before = self._closed.get(one.path)
@@ -320,7 +321,7 @@ class Grouper:
         except Held as error:
             reason, detail = "held", str(error)
         except NotYet as error:
-            stuck = before is not None and settled and wall - before.since > _HOPELESS
+            stuck = before is not None and calm and wall - before.since > _HOPELESS
             reason, detail = "broken" if stuck else "writing", str(error)
             if one.size == 0:
                 reason = "empty"
@@ -355,12 +356,12 @@ class Grouper:
         clock = contents.steps[record], contents.times[record]
         return content_key(one.inode, record, *clock, generation)
 
-    def _records(self, one: Seen, file: _File, settled: bool, wall: float) -> list[Arrival]:
-        """Records that are whole: the last one only when the file is at rest, since its room may
-        have been made before its numbers were written."""
+    def _records(self, one: Seen, file: _File, calm: Rest, wall: float) -> list[Arrival]:
+        """Records that are whole: the last one only when the file has been quiet, since its room
+        may have been made before its numbers were written."""
         contents = file.contents
         out = []
-        for record in range(contents.records if settled else contents.records - 1):
+        for record in range(contents.records if calm == Rest.QUIET else contents.records - 1):
             step, time = contents.steps[record], contents.times[record]
             if record not in file.keys:
                 key = self._record_key(one, contents, record, file.generation)

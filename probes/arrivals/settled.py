@@ -5,6 +5,7 @@ from __future__ import annotations
 
 import re
 from dataclasses import dataclass, field
+from enum import IntEnum
 
 LOCAL_QUIET = 0.2
 # Twice the three seconds for which attributes of files are commonly cached at least.
@@ -35,6 +36,20 @@ def mount_kind(path: str, mounts: str) -> str:
     return kind
 
 
+# Inode, size in bytes, time of change in ns.
+Identity = tuple[int, int, int]
+
+
+class Rest(IntEnum):
+    """NONE: it may still be written. CLOSED: renamed into place or closed after writing, and
+    unchanged since: complete, unless its writer comes back for more (a growing file). QUIET:
+    unchanged for the quiet time."""
+
+    NONE = 0
+    CLOSED = 1
+    QUIET = 2
+
+
 @dataclass
 class Settling:
     """Remembers when each file was first seen as it is now.
@@ -44,27 +59,22 @@ class Settling:
     """
 
     quiet: float
-    _first: dict[str, tuple[tuple[int, int, int], float]] = field(default_factory=dict)
-    _hurried: dict[str, tuple[int, int, int] | None] = field(default_factory=dict)
+    _first: dict[str, tuple[Identity, float]] = field(default_factory=dict)
+    _hurried: dict[str, Identity] = field(default_factory=dict)
 
-    def closed(self, path: str) -> None:
-        """The file was renamed into place or closed after writing: complete as it is next seen."""
-        self._hurried[path] = None
+    def closed(self, path: str, identity: Identity) -> None:
+        """The file was renamed into place or closed after writing, and was this then."""
+        self._hurried[path] = identity
 
-    def complete(self, path: str, identity: tuple[int, int, int], now: float, wall: float) -> bool:
-        """Whether a file with this (inode, size, time of change in ns) is complete."""
-        if path in self._hurried:
-            as_closed = self._hurried[path]
-            if as_closed is None or as_closed == identity:
-                self._hurried[path] = identity
-                return True
-            del self._hurried[path]  # it is being written again
+    def rest(self, path: str, identity: Identity, now: float, wall: float) -> Rest:
+        """How calm a file is that is seen like this."""
         old = self._first.get(path)
         if old is None or old[0] != identity:
-            self._first[path] = (identity, now)
-            # Old enough already when first seen as it is: nobody is at it.
-            return wall - identity[2] / 1e9 >= self.quiet
-        return now - old[1] >= self.quiet or wall - identity[2] / 1e9 >= self.quiet
+            old = self._first[path] = (identity, now)
+        # Old enough already when first seen as it is: nobody is at it.
+        if now - old[1] >= self.quiet or wall - identity[2] / 1e9 >= self.quiet:
+            return Rest.QUIET
+        return Rest.CLOSED if self._hurried.get(path) == identity else Rest.NONE
 
     def forget_all_but(self, paths: set[str]) -> None:
         """Drop what is remembered of files that are gone."""

@@ -6,6 +6,7 @@ Our own reading makes "opened" and "closed without writing" events, which must n
 
 from __future__ import annotations
 
+import contextlib
 import os
 import threading
 from collections.abc import Iterable
@@ -26,7 +27,7 @@ class Wakeups:
     def __init__(self) -> None:
         self._event = threading.Event()
         self._lock = threading.Lock()
-        self._closed: set[str] = set()
+        self._closed: dict[str, tuple[int, int, int]] = {}
         self._observer: BaseObserver | None = None
         self._folders: tuple[tuple[str, int], ...] = ()
         self.reason = "not started"
@@ -96,8 +97,11 @@ class Wakeups:
 
     def _wake(self, closed: str) -> None:
         if closed:
-            with self._lock:
-                self._closed.add(closed)
+            # As it is right now: if it is opened again before the next look, it is another.
+            with contextlib.suppress(OSError):
+                found = os.stat(closed)
+                with self._lock:
+                    self._closed[closed] = found.st_ino, found.st_size, found.st_mtime_ns
         self._event.set()
 
     def wait(self, seconds: float) -> None:
@@ -105,10 +109,11 @@ class Wakeups:
         self._event.wait(seconds)
         self._event.clear()
 
-    def closed(self) -> set[str]:
-        """Paths renamed into place or closed after writing since the last call."""
+    def closed(self) -> dict[str, tuple[int, int, int]]:
+        """Paths renamed into place or closed after writing since the last call, with inode, size
+        and time of change in ns as they were then."""
         with self._lock:
-            out, self._closed = self._closed, set()
+            out, self._closed = self._closed, {}
         return out
 
     def stop(self) -> None:

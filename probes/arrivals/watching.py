@@ -77,15 +77,15 @@ class Watching:
         # Events are taken before the listing: one that comes in between wakes the next look.
         closed = self._wakeups.closed()
         seen = self._listing.look()
-        for path in closed.intersection(one.path for one in seen):
-            self._settling.closed(path)
+        for path in closed.keys() & {one.path for one in seen}:
+            self._settling.closed(path, closed[path])
         if self._events:
             self._wakeups.watch(self._listing.folders())
         now, wall = time.monotonic(), time.time()
-        calm = {s.path: self._settling.complete(s.path, s.identity, now, wall) for s in seen}
-        self._settling.forget_all_but(set(calm))
+        rest = {s.path: self._settling.rest(s.path, s.identity, now, wall) for s in seen}
+        self._settling.forget_all_but(set(rest))
         arrivals, pending = self._grouper.group(
-            seen, lambda s: calm[s.path], self._settling.quiet, wall
+            seen, lambda s: rest[s.path], self._settling.quiet, wall
         )
         return Looked(
             arrivals=tuple(arrivals),

@@ -9,6 +9,7 @@ import pytest
 from probes.arrivals.groups import Grouper
 from probes.arrivals.listing import Seen
 from probes.arrivals.patterns import Pattern
+from probes.arrivals.settled import Rest
 from probes.errors import Held, NotYet, ReadError, Refused
 from probes.snapshot import Contents
 from probes.spec import SnapshotSpec
@@ -26,7 +27,7 @@ class Folder:
     known: set[str] = field(default_factory=set)
     files: dict[str, Seen] = field(default_factory=dict)
     contents: dict[str, Contents | ReadError] = field(default_factory=dict)
-    unsettled: set[str] = field(default_factory=set)
+    unsettled: dict[str, Rest] = field(default_factory=dict)
     described: list[str] = field(default_factory=list)
     wall: float = WALL
 
@@ -43,7 +44,13 @@ class Folder:
         return said
 
     def put(
-        self, name: str, *, inode: int = 0, size: int = 100, age: float = 60.0, settled: bool = True
+        self,
+        name: str,
+        *,
+        inode: int = 0,
+        size: int = 100,
+        age: float = 60.0,
+        rest: Rest = Rest.QUIET,
     ) -> None:
         """A file as it is now; inode 0 gives it one of its own."""
         for index, pattern in enumerate(self.made):
@@ -60,14 +67,13 @@ class Folder:
                 break
         else:
             raise AssertionError(f"{name} fits no pattern")
-        self.unsettled -= {f"/run/{name}"}
-        if not settled:
-            self.unsettled.add(f"/run/{name}")
+        self.unsettled[f"/run/{name}"] = rest
+
+    def rest(self, one: Seen) -> Rest:
+        return self.unsettled.get(one.path, Rest.QUIET)
 
     def look(self) -> tuple[list[Arrival], list[Pending]]:
-        return self.grouper.group(
-            self.files.values(), lambda one: one.path not in self.unsettled, 0.2, self.wall
-        )
+        return self.grouper.group(self.files.values(), self.rest, 0.2, self.wall)
 
     def take(self) -> list[int | None]:
         """Steps that arrive; they are known from then on."""
@@ -173,7 +179,7 @@ def test_a_settling_file_holds_back_later_ones_for_a_while() -> None:
     """A file that is complete at once by an event must not overtake an earlier one that needs its
     quiet time; but one that never settles holds nothing up for long."""
     folder = Folder(("h_{step}.npy",))
-    folder.put("h_10.npy", age=0.1, settled=False)
+    folder.put("h_10.npy", age=0.1, rest=Rest.NONE)
     folder.put("h_20.npy", age=0.0)
     folder.put("h_5.npy")
     assert folder.take() == [5]
@@ -181,25 +187,25 @@ def test_a_settling_file_holds_back_later_ones_for_a_while() -> None:
     assert folder.take() == []
     folder.put("h_10.npy", age=0.1, inode=1000)
     assert folder.take() == [10, 20]
-    folder.put("h_30.npy", age=0.0, settled=False)
+    folder.put("h_30.npy", age=0.0, rest=Rest.NONE)
     folder.put("h_40.npy")
     assert folder.take() == []
     folder.wall += 2.1
     assert folder.take() == [40]
     folder.put("h_60.npy")
     for second in range(59):
-        folder.put("h_50.npy", inode=50, size=second, age=0.0, settled=False)
+        folder.put("h_50.npy", inode=50, size=second, age=0.0, rest=Rest.NONE)
         assert folder.take() == []
         folder.wall += 1.0
     folder.wall += 1.0
-    folder.put("h_50.npy", inode=50, size=99, age=0.0, settled=False)
+    folder.put("h_50.npy", inode=50, size=99, age=0.0, rest=Rest.NONE)
     assert folder.take() == [60]
 
 
 def test_settling_files_without_steps_keep_the_order_of_writing() -> None:
     """Of two names in turn, the one written later waits for the one written before."""
     folder = Folder(("T_?.npy",), contents=dict.fromkeys(("T_a.npy", "T_b.npy"), Contents(())))
-    folder.put("T_a.npy", age=0.15, settled=False)
+    folder.put("T_a.npy", age=0.15, rest=Rest.NONE)
     folder.put("T_b.npy", age=0.05)
     assert folder.look()[0] == []
     folder.unsettled.clear()
@@ -230,12 +236,15 @@ def test_parts_overwritten_in_place() -> None:
 
 
 def test_growing_file() -> None:
-    """Each new record arrives once; the last one only when the file is at rest; the file is opened
+    """Each new record arrives once; the last one only when the file has been quiet, since its
+    writer may be back after closing it; the file is opened
     again only when it has changed."""
     folder = Folder(("run.h5",))
     folder.contents["run.h5"] = growing(0, 10)
-    folder.put("run.h5", inode=9, settled=False)
+    folder.put("run.h5", inode=9, rest=Rest.NONE)
     assert folder.take() == [0]
+    folder.put("run.h5", inode=9, rest=Rest.CLOSED)
+    assert folder.take() == []
     folder.put("run.h5", inode=9)
     arrivals, _ = folder.look()
     assert [(a.step, a.time, a.record, a.growing) for a in arrivals] == [(10, 5.0, 1, True)]
