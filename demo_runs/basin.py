@@ -27,6 +27,7 @@ from demo_runs.march import (
     Solver,
     State,
     Truth,
+    check_fault,
     energy_box,
     into_place,
     wavelength,
@@ -95,7 +96,7 @@ def step_matrix(step_factor: float, fault: str | None = None) -> sp.csr_matrix:
 @cache
 def growth(step_factor: float, fault: str | None = None) -> Truth:
     """What a run at this step does. Raises KeyError for an unknown fault."""
-    _known(fault)
+    check_fault(fault, FAULTS)
     if fault is None:
         _omega, mode = waves.fastest(_matrix()[0])
         factor = waves.leapfrog_factor(step_factor)
@@ -133,7 +134,7 @@ class BasinFiles(Output):
 
 def build(step_factor: float, fault: str | None, folder: Path) -> Cast:
     """The basin at a step relative to its limit, half a metre of slosh."""
-    _known(fault)
+    check_fault(fault, FAULTS)
     dt = step_factor * limit_step()
     deep, mouth = face_depths(), _mouth(fault, dt)
     _, modes = waves.slowest(_matrix()[0], 3)
@@ -163,11 +164,6 @@ def build(step_factor: float, fault: str | None, folder: Path) -> Cast:
         return {"h": out, "u": u, "v": v}
 
     return Cast(dt, start, step, BasinFiles(folder))
-
-
-def _known(fault: str | None) -> None:
-    if fault is not None and fault not in FAULTS:
-        raise KeyError(fault)
 
 
 SOLVER = Solver("basin", "waves in a harbour basin", build, EVERY, 2_400, FAULTS)

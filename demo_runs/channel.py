@@ -23,7 +23,17 @@ import scipy.sparse as sp
 from numpy.typing import NDArray
 from scipy.sparse.linalg import eigs, spsolve
 
-from demo_runs.march import Array, Cast, Output, Solver, State, Truth, energy_box, wavelength
+from demo_runs.march import (
+    Array,
+    Cast,
+    Output,
+    Solver,
+    State,
+    Truth,
+    check_fault,
+    energy_box,
+    wavelength,
+)
 from demo_runs.march import main as march_main
 
 Indices = NDArray[np.int64]
@@ -125,7 +135,7 @@ def limit_step() -> float:
 @cache
 def growth(step_factor: float, fault: str | None = None) -> Truth:
     """What a run at this step does. Raises KeyError for an unknown fault."""
-    _known(fault)
+    check_fault(fault, FAULTS)
     dt = step_factor * limit_step()
     found = [_stiffest(operator(fault)), _rightmost(operator(fault))]
     values = np.concatenate([v for v, _ in found])
@@ -191,7 +201,7 @@ class ChannelFile(Output):
 
 def build(step_factor: float, fault: str | None, folder: Path) -> Cast:
     """The channel at a step relative to its limit."""
-    _known(fault)
+    check_fault(fault, FAULTS)
     dt = step_factor * limit_step()
     matrix = sp.csr_matrix(dt * operator(fault))
 
@@ -200,11 +210,6 @@ def build(step_factor: float, fault: str | None, folder: Path) -> Cast:
         return {"dye": dye + (matrix @ dye.ravel()).reshape(SHAPE)}
 
     return Cast(dt, {"dye": _start().copy()}, step, ChannelFile(folder))
-
-
-def _known(fault: str | None) -> None:
-    if fault is not None and fault not in FAULTS:
-        raise KeyError(fault)
 
 
 SOLVER = Solver("channel", "dye in a channel", build, EVERY, 20_000, FAULTS)

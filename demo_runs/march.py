@@ -131,6 +131,15 @@ def options(solver: Solver, words: Sequence[str] | None) -> argparse.Namespace:
     return chosen
 
 
+def _restarted(cast: Cast, path: Path) -> tuple[State, int, float]:
+    """State, step and time of a snapshot. Raises ValueError for a snapshot of something else."""
+    state, step, now = cast.output.read(path)
+    shapes = {name: values.shape for name, values in cast.state.items()}
+    if {name: values.shape for name, values in state.items()} != shapes:
+        raise ValueError(f"its fields are not {shapes}")
+    return state, step, now
+
+
 def main(solver: Solver, words: Sequence[str] | None = None) -> int:
     """March to the last step, a stop file or SIGTERM; returns the exit status."""
     chosen = options(solver, words)
@@ -138,7 +147,7 @@ def main(solver: Solver, words: Sequence[str] | None = None) -> int:
     state, step, now = cast.state, 0, 0.0
     if chosen.restart is not None:
         try:
-            state, step, now = cast.output.read(chosen.restart)
+            state, step, now = _restarted(cast, chosen.restart)
         except (OSError, ValueError, KeyError) as error:
             print(f"{chosen.restart}: cannot restart from it ({error})", file=sys.stderr)
             return 2
@@ -163,6 +172,12 @@ def main(solver: Solver, words: Sequence[str] | None = None) -> int:
                 break
     print(f"{solver.name}: ended at step {step} ({why})", file=sys.stderr, flush=True)
     return 0
+
+
+def check_fault(fault: str | None, known: tuple[str, ...]) -> None:
+    """Raises KeyError for a fault that a solver does not have."""
+    if fault is not None and fault not in known:
+        raise KeyError(fault)
 
 
 def energy_box(mode: NDArray[np.inexact[Any]], share: float = 0.95) -> Box:

@@ -25,6 +25,7 @@ from demo_runs.march import (
     Solver,
     State,
     Truth,
+    check_fault,
     energy_box,
     into_place,
     wavelength,
@@ -81,7 +82,7 @@ def step_matrix(step_factor: float, fault: str | None = None) -> Array:
 @cache
 def growth(step_factor: float, fault: str | None = None) -> Truth:
     """What a run at this step does. Raises KeyError for an unknown fault."""
-    _known(fault)
+    check_fault(fault, FAULTS)
     if fault is None:
         _, mode = waves.fastest(_matrix()[0])
         mode = mode * _matrix()[1]
@@ -119,7 +120,7 @@ class PipeFiles(Output):
 
 def build(step_factor: float, fault: str | None, folder: Path) -> Cast:
     """The pipe at a step relative to its limit, one bar of surge on ten."""
-    _known(fault)
+    check_fault(fault, FAULTS)
     dt = step_factor * limit_step()
     modulus, share = stiffness(), _closure(fault, dt)
     matrix, root = _matrix()
@@ -142,11 +143,6 @@ def build(step_factor: float, fault: str | None, folder: Path) -> Cast:
         return {"p": out, "u": u}
 
     return Cast(dt, start, step, PipeFiles(folder))
-
-
-def _known(fault: str | None) -> None:
-    if fault is not None and fault not in FAULTS:
-        raise KeyError(fault)
 
 
 SOLVER = Solver("pipe", "pressure in a pipe", build, EVERY, 2_400, FAULTS)

@@ -26,6 +26,7 @@ from demo_runs.march import (
     Solver,
     State,
     Truth,
+    check_fault,
     energy_box,
     into_place,
     wavelength,
@@ -55,7 +56,7 @@ def faces(axis: int, fault: str | None) -> Array:
     walls = np.concatenate([k[:1], inner, k[-1:]]) / SPACING**2
     if fault == "reversed-edge" and axis == 0:
         # The flux through the last wall has its sign wrong: the hotter, the more heat comes in.
-        walls[-1] *= -0.2
+        walls[-1] *= -1.0
     return np.moveaxis(walls, 0, axis)
 
 
@@ -91,7 +92,7 @@ def limit_step() -> float:
 @cache
 def growth(step_factor: float, fault: str | None = None) -> Truth:
     """What a run at this step does. Raises KeyError for an unknown fault."""
-    _known(fault)
+    check_fault(fault, FAULTS)
     dt = step_factor * limit_step()
     low, low_mode = eigsh(operator(fault), k=1, which="SA")
     high, high_mode = eigsh(operator(fault), k=1, which="LA")
@@ -134,7 +135,7 @@ class PlateFiles(Output):
 
 def build(step_factor: float, fault: str | None, folder: Path) -> Cast:
     """The plate at a step relative to its limit."""
-    _known(fault)
+    check_fault(fault, FAULTS)
     dt = step_factor * limit_step()
     across, along = dt * faces(0, fault), dt * faces(1, fault)
     padded = np.full((SHAPE[0] + 2, SHAPE[1] + 2), WALL)
@@ -147,11 +148,6 @@ def build(step_factor: float, fault: str | None, folder: Path) -> Cast:
         return {"T": out}
 
     return Cast(dt, {"T": _slowest().copy()}, step, PlateFiles(folder))
-
-
-def _known(fault: str | None) -> None:
-    if fault is not None and fault not in FAULTS:
-        raise KeyError(fault)
 
 
 SOLVER = Solver("plate", "heat in a cooling plate", build, EVERY, 20_000, FAULTS)
