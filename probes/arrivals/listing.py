@@ -8,15 +8,16 @@ from __future__ import annotations
 
 import os
 import stat
-from collections.abc import Callable, Iterator
+from collections.abc import Callable, Iterable, Iterator
 from dataclasses import dataclass
 
-from probes.arrivals.patterns import Match, Pattern
+from probes.arrivals.patterns import Level, Match, Pattern
 from probes.errors import ArrivalError
 
 NEWEST = 64
 FEW = 1000
 EVERYTHING_AFTER = 30.0
+_NOTHING = Match()
 
 
 @dataclass(frozen=True, slots=True)
@@ -40,68 +41,111 @@ class Listing:
 
     def __init__(self, patterns: tuple[Pattern, ...], clock: Callable[[], float]) -> None:
         self._patterns, self._clock = patterns, clock
+        self._levels: dict[tuple[int, int, str], tuple[list[str], list[tuple[str, Match]]]] = {}
+        self._visited: set[tuple[int, int, str]] = set()
+        self._found: dict[str, tuple[int, Match]] = {}
+        self._lively: list[str] = []
         self._seen: dict[str, Seen] = {}
+        self._list: list[Seen] = []
         self._all_at = -EVERYTHING_AFTER
+        self._other_names = True
         self.listed = 0
 
-    def look(self) -> list[Seen]:
-        """All matching files now. Raises ArrivalError where a folder cannot be listed; a folder
-        that is not there yet holds nothing."""
-        found: dict[str, tuple[int, Match]] = {}
+    def look(self, also: Iterable[str] = ()) -> list[Seen]:
+        """All matching files now: the very list of the last look if nothing has changed.
+
+        also: paths that have changed for certain. Raises ArrivalError where a folder cannot be
+        listed; one that is not there yet holds nothing.
+        """
         self.listed = 0
+        self._visited.clear()
+        found: dict[str, tuple[int, Match]] = {}
         for index, pattern in enumerate(self._patterns):
-            for path, match in self._walk(pattern.root, pattern, 0, Match()):
+            for path, match in self._walk(index, pattern, 0, pattern.root, _NOTHING):
                 found.setdefault(path, (index, match))
+        other_names, self._other_names = self._other_names, False
+        if other_names:
+            self._found, self._lively = found, _newest(found)
+            self._levels = {k: v for k, v in self._levels.items() if k in self._visited}
         now = self._clock()
         everything = len(found) <= FEW or now - self._all_at >= EVERYTHING_AFTER
         if everything:
             self._all_at = now
-        steps = sorted({m.step for _, m in found.values() if m.step is not None})
-        newest = steps[-NEWEST] if len(steps) > NEWEST else -1
-        kept: dict[str, Seen] = {}
-        for path, (index, match) in found.items():
-            old = self._seen.get(path)
-            calm = match.step is not None and match.step < newest and not everything
-            if old is not None and calm:
-                kept[path] = old
+        wanted = set(self._found if everything else self._lively)
+        wanted |= self._found.keys() & set(also)
+        if other_names:
+            wanted |= self._found.keys() - self._seen.keys()
+        changed = other_names
+        for path in wanted:
+            index, match = self._found[path]
+            old, seen = self._seen.get(path), _status(path, index, match)
+            if seen == old:
                 continue
-            seen = _status(path, index, match)
-            if seen is not None:
-                kept[path] = seen
-        self._seen = kept
-        return list(kept.values())
+            changed = True
+            if seen is None:
+                del self._seen[path]
+            else:
+                self._seen[path] = seen
+        if changed:
+            self._seen = {p: self._seen[p] for p in self._found if p in self._seen}
+            self._list = list(self._seen.values())
+        return self._list
 
     def folders(self) -> list[str]:
         """Folders that a new file may appear in, as far as they are there."""
         out = {p.root for p in self._patterns if os.path.isdir(p.root)}
-        out |= {os.path.dirname(path) for path in self._seen}
+        deep = {i for i, p in enumerate(self._patterns) if len(p.levels) > 1}
+        if deep:
+            out |= {os.path.dirname(s.path) for s in self._list if s.pattern in deep}
         return sorted(out)
 
     def _walk(
-        self, folder: str, pattern: Pattern, depth: int, so_far: Match
+        self, index: int, pattern: Pattern, depth: int, folder: str, so_far: Match
     ) -> Iterator[tuple[str, Match]]:
-        level = pattern.levels[depth]
         last = depth == len(pattern.levels) - 1
+        for path, match in self._matching(index, depth, folder, pattern.levels[depth]):
+            both = match if so_far is _NOTHING else so_far.joined(match)
+            if both is None:
+                continue
+            if last:
+                yield path, both
+            else:
+                yield from self._walk(index, pattern, depth + 1, path, both)
+
+    def _matching(
+        self, index: int, depth: int, folder: str, level: Level
+    ) -> list[tuple[str, Match]]:
+        """Entries of a folder that fit one level of a pattern; matched anew only where the names
+        are others."""
         if level.literal:
             names = [level.text]
         else:
             try:
                 names = os.listdir(folder)
             except (FileNotFoundError, NotADirectoryError):
-                return
+                names = []
             except OSError as error:
                 raise ArrivalError(f"cannot be listed ({error.strerror})", folder) from error
             self.listed += len(names)
-        for name in names:
-            match = Match() if level.literal else level.match(name)
-            both = so_far.joined(match) if match is not None else None
-            if both is None:
-                continue
-            path = os.path.join(folder, name)
-            if last:
-                yield path, both
-            else:
-                yield from self._walk(path, pattern, depth + 1, both)
+        self._visited.add((index, depth, folder))
+        known = self._levels.get((index, depth, folder))
+        if known is not None and known[0] == names:
+            return known[1]
+        self._other_names = True
+        fitting = [
+            (os.path.join(folder, name), match)
+            for name in names
+            if (match := _NOTHING if level.literal else level.match(name)) is not None
+        ]
+        self._levels[index, depth, folder] = names, fitting
+        return fitting
+
+
+def _newest(found: dict[str, tuple[int, Match]]) -> list[str]:
+    """Paths of the newest steps, and of files whose names have no step."""
+    steps = sorted({m.step for _, m in found.values() if m.step is not None})
+    newest = steps[-NEWEST] if len(steps) > NEWEST else -1
+    return [path for path, (_, m) in found.items() if m.step is None or m.step >= newest]
 
 
 def _status(path: str, index: int, match: Match) -> Seen | None:

@@ -7,12 +7,15 @@ import time
 from collections.abc import Iterable
 from pathlib import Path
 
+import msgspec
+
 from probes.arrivals.groups import Describe, Grouper
-from probes.arrivals.listing import Listing
+from probes.arrivals.listing import Listing, Seen
 from probes.arrivals.patterns import Pattern
 from probes.arrivals.settled import (
     LOCAL_QUIET,
     NETWORK_QUIET,
+    Rest,
     Settling,
     is_network,
     mount_kind,
@@ -50,6 +53,8 @@ class Watching:
         self._network = is_network(kind)
         quiet = NETWORK_QUIET if self._network else LOCAL_QUIET
         self._settling = Settling(spec.settle_seconds if spec.settle_seconds >= 0 else quiet)
+        self._calm_list: list[Seen] = []
+        self._calm: Looked | None = None
         self._wakeups = Wakeups()
         self._events = events and not self._network
         if self._network:
@@ -76,24 +81,40 @@ class Watching:
     def _once(self) -> Looked:
         # Events are taken before the listing: one that comes in between wakes the next look.
         closed = self._wakeups.closed()
-        seen = self._listing.look()
-        for path in closed.keys() & {one.path for one in seen}:
-            self._settling.closed(path, closed[path])
+        seen = self._listing.look(also=closed)
         if self._events:
             self._wakeups.watch(self._listing.folders())
+        if seen is self._calm_list and self._calm is not None:
+            known = self._grouper.known
+            left = tuple(a for a in self._calm.arrivals if a.key not in known)
+            self._calm = msgspec.structs.replace(
+                self._calm,
+                arrivals=left,
+                wakeup="events" if self._wakeups.live else "polling",
+                wakeup_reason=self._wakeups.reason,
+                listed=self._listing.listed,
+            )
+            return self._calm
+        for path in closed.keys() & {one.path for one in seen}:
+            self._settling.closed(path, closed[path])
         now, wall = time.monotonic(), time.time()
         rest = {s.path: self._settling.rest(s.path, s.identity, now, wall) for s in seen}
         self._settling.forget_all_but(set(rest))
         arrivals, pending = self._grouper.group(
             seen, lambda s: rest[s.path], self._settling.quiet, wall
         )
-        return Looked(
+        looked = Looked(
             arrivals=tuple(arrivals),
             pending=tuple(pending),
             wakeup="events" if self._wakeups.live else "polling",
             wakeup_reason=self._wakeups.reason,
             listed=self._listing.listed,
         )
+        # Where nothing is under way, the same files give the same answer.
+        at_rest = all(calm == Rest.QUIET for calm in rest.values())
+        final = all(p.reason in ("refused", "broken") for p in pending)
+        self._calm_list, self._calm = seen, looked if at_rest and final else None
+        return looked
 
     def complete_now(self) -> tuple[Arrival, ...]:
         """Everything complete at this moment, oldest first."""

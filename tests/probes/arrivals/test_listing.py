@@ -75,7 +75,8 @@ def test_link_shows_its_target(tmp_path: Path) -> None:
 def test_long_runs_are_not_looked_at_over_and_over(
     tmp_path: Path, monkeypatch: pytest.MonkeyPatch
 ) -> None:
-    """Of many files only new ones and the newest are looked at; all of them after a while."""
+    """Of many files only new ones, the newest and those named are looked at; all of them after a
+    while. Where nothing has changed the very same list comes back."""
     monkeypatch.setattr(listing, "NEWEST", 3)
     for n in range(FEW + 10):
         (tmp_path / f"h_{n}.npy").touch()
@@ -97,6 +98,11 @@ def test_long_runs_are_not_looked_at_over_and_over(
     assert len(found.look()) == FEW + 10
     assert "h_5000.npy" in looked
     assert len(looked) <= 4
+    looked.clear()
+    assert found.look() is found.look()
+    looked.clear()
+    found.look(also=[str(tmp_path / "h_9.npy"), str(tmp_path / "other")])
+    assert "h_9.npy" in looked
     looked.clear()
     clock.now = EVERYTHING_AFTER
     found.look()

@@ -154,3 +154,19 @@ def test_without_watches_it_says_so(tmp_path: Path, monkeypatch: pytest.MonkeyPa
         folder.mkdir()
     wakeups.watch(map(str, folders))
     assert str(len(folders)) in wakeups.reason
+
+
+def test_a_calm_folder_is_still_watched(tmp_path: Path, watch: Callable[..., Watching]) -> None:
+    """Looks at an unchanged folder offer the same; a rewritten file is new, a removed one gone."""
+    for step in (1, 2):
+        (tmp_path / f"h_{step}.npy").write_bytes(b"x")
+        os.utime(tmp_path / f"h_{step}.npy", (1e9, 1e9))
+    watching = watch("h_{step}.npy", events=False)
+    first = watching.look(0.0)
+    assert watching.look(0.0).arrivals == first.arrivals
+    watching.settle([first.arrivals[0].key])
+    assert steps(watching.look(0.0)) == [2]
+    os.utime(tmp_path / "h_1.npy", (1e9 + 5, 1e9 + 5))
+    assert steps(watching.look(0.0)) == [1, 2]
+    (tmp_path / "h_2.npy").unlink()
+    assert steps(watching.look(0.0)) == [1]
