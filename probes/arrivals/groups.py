@@ -91,7 +91,8 @@ class Grouper:
     _slots: set[Slot] = field(default_factory=set)
     _files: dict[str, _File] = field(default_factory=dict)
     _closed: dict[str, _Closed] = field(default_factory=dict)
-    _since: dict[str, float] = field(default_factory=dict)
+    _since: dict[tuple[str, int | None], float] = field(default_factory=dict)
+    _waiting: dict[tuple[str, int | None], float] = field(default_factory=dict)
     _made: dict[int, tuple[list[Seen], Arrival]] = field(default_factory=dict)
 
     def group(
@@ -118,7 +119,7 @@ class Grouper:
         self._by_step(stepped, rest, quiet, wall, arrivals, pending)
         self._made = {step: made for step, made in self._made.items() if step in stepped}
         new = {a.key: a for a in arrivals if a.key not in self.known}
-        self._since = {p.key: p.since for p in pending}
+        self._since, self._waiting = self._waiting, {}
         ready = self._in_turn(new.values(), stepped, unnamed, pending, rest, quiet, wall)
         return sorted(ready, key=_order), pending
 
@@ -176,7 +177,9 @@ class Grouper:
         self, one: Seen, reason: Reason, detail: str, wall: float, step: int | None = None
     ) -> Pending:
         key = content_key(reason, one.path, step, one.inode)
-        since = self._since.setdefault(key, wall)
+        # Whether a file is held or half written may change with every look: what counts is how
+        # long it could not be judged.
+        since = self._waiting[one.path, step] = self._since.get((one.path, step), wall)
         solver_step = step * self.spec.step_factor if step is not None else None
         return Pending(
             key=key, path=one.path, reason=reason, detail=detail, since=since, step=solver_step

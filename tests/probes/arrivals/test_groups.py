@@ -306,6 +306,25 @@ def test_why_a_file_is_not_judged(error: ReadError, reason: str) -> None:
     assert [(p.reason, p.since) for p in pending] == [(reason, WALL)]
 
 
+def test_held_and_half_written_in_turn() -> None:
+    """A writer that keeps readers out is seen now as holding the file, now as half way through:
+    the time since the first trouble counts on, until the file could be read."""
+    folder = Folder(("T_?.npz",))
+    for n in range(5):
+        folder.contents["T_a.npz"] = Held("held") if n % 2 else NotYet("half")
+        folder.put("T_a.npz", inode=3, size=100 + n)
+        _, pending = folder.look()
+        assert [p.since for p in pending] == [WALL]
+        folder.wall += 20.0
+    folder.contents["T_a.npz"] = Contents(())
+    folder.put("T_a.npz", inode=3, size=200)
+    assert len(folder.look()[0]) == 1
+    folder.contents["T_a.npz"] = Held("held")
+    folder.put("T_a.npz", inode=3, size=300)
+    _, pending = folder.look()
+    assert [p.since for p in pending] == [folder.wall]
+
+
 def test_closed_files_are_tried_ever_less_often() -> None:
     """An unchanged file that cannot be opened is retried with growing pauses, at once when it
     changes, and called broken when it has been at rest and incomplete for over a minute."""

@@ -66,8 +66,8 @@ def test_forgets_what_is_gone() -> None:
 
 MOUNTS = """\
 21 1 8:1 / / rw,relatime shared:1 - ext4 /dev/sda1 rw
-30 21 0:50 / /home rw shared:2 - nfs4 server:/home rw
-31 30 0:51 / /home/me/my\\040data rw - fuse.sshfs me@far: rw
+30 21 0:50 / /projects rw shared:2 - nfs4 server:/p rw
+31 21 0:51 / /mnt/tide\\040data rw - fuse.sshfs far: rw
 32 21 0:52 / /scratch rw - lustre mds:/scratch rw
 """
 
@@ -76,9 +76,9 @@ MOUNTS = """\
     ("path", "kind", "network"),
     [
         ("/var/run1", "ext4", False),
-        ("/home/me/run", "nfs4", True),
-        ("/homework", "ext4", False),
-        ("/home/me/my data/run", "fuse.sshfs", True),
+        ("/projects/run", "nfs4", True),
+        ("/projects-old", "ext4", False),
+        ("/mnt/tide data/run", "fuse.sshfs", True),
         ("/scratch", "lustre", True),
     ],
 )
