@@ -34,6 +34,14 @@ _KEPT = 512
 OVER_FLOOR = math.log(6.0)
 # A pair has to make up this much of the ripple of the last difference.
 SHARE = 0.4
+# The same for a pair whose sign alternates, which nothing resolved does.
+_ODD_SHARE = 0.02
+# A value that came up in as many snapshots in a row, with so small a residual, share and growth per
+# snapshot, is no accident of the noise.
+_STEADY = 5
+_STEADY_RESIDUAL = 0.05
+_STEADY_SHARE = 0.03
+_STEADY_VALUE = 1.25
 # Longest wavelength, in cells, up to which growth is suspicious though not damning.
 _DOUBTFUL_CELLS = 6.5
 _DOUBLE_LARGEST = 709.78
@@ -353,48 +361,88 @@ def _modes(
     """Ritz pairs that persist between windows and grow as their factor foretells."""
     out = []
     for m in evidence.modes:
-        if m.held < alarm.held:
+        if _expected(math.log(m.factor), evidence, fields.get(m.f.split("[")[0])):
             continue
-        off = abs(m.gain - m.foretold)
-        true_to_rate = off <= 0.1 + 0.05 * m.foretold
-        enough = m.held > alarm.held and max(m.grown, 2.0 * m.foretold) >= math.log(10.0)
-        short = m.cells is not None and m.cells <= alarm.mode_cells
-        odd = m.odd and off <= max(0.15, 0.5 * m.foretold) and m.foretold > 0.2
-        # Products of a resolved growth (its harmonics) are shorter and grow faster than it does.
-        carried = m.share < 0.3 and any(
-            o.f == m.f
-            and o.view == m.view
-            and o.share > m.share
-            and 1.0 < o.factor < m.factor
-            and (o.cells is None or o.cells > _DOUBTFUL_CELLS)
-            for o in evidence.modes
-        )
-        # In the bulk the little ripple of a pair may be another's: its wavelength proves nothing.
-        short = short and m.view == "ripple" and m.share >= SHARE and not carried
-        expected = _expected(math.log(m.factor), evidence, fields.get(m.f.split("[")[0]))
         factor = Estimate(m.factor, m.low, m.high, 0.9)
-        what = (
-            f"{m.f}: a mode persists over {m.held} snapshots and grows {m.factor:.5g} per step"
-            + (f", {m.cells:.1f} cells long" if m.cells is not None else "")
-        )
-        if odd:
-            what += ", alternating in sign from one snapshot to the next"
-        if ((short and true_to_rate and enough) or odd) and not expected:
-            out.append(
-                Finding(
-                    "runaway",
-                    "numerical",
-                    m.f,
-                    what,
-                    100.0 + m.held,
-                    factor,
-                    m.cells,
-                    _mode_onset(m, evidence, x),
-                )
+        length = f", {m.cells:.1f} cells long" if m.cells is not None else ""
+        onset = _mode_onset(m, evidence, x)
+        off = abs(m.gain - m.foretold)
+        held = m.held >= alarm.held
+        if held and _alternates(m, off):
+            why = (
+                f"{m.f}: a mode persists over {m.held} snapshots and grows {m.factor:.5g} per "
+                f"step{length}, alternating in sign from one snapshot to the next"
             )
-        elif true_to_rate and enough:
-            out.append(Finding("quiet", "resolved", m.f, what, 1.0, factor, m.cells))
+            out.append(_alarm(m, why, 100.0 + m.held, factor, onset))
+        elif held and _foretold(m, off, alarm):
+            why = (
+                f"{m.f}: a mode persists over {m.held} snapshots and grows {m.factor:.5g} per "
+                f"step{length}"
+            )
+            if _short(m, evidence, alarm):
+                out.append(_alarm(m, why, 100.0 + m.held, factor, onset))
+            else:
+                out.append(Finding("quiet", "resolved", m.f, why, 1.0, factor, m.cells))
+        elif _same_alternation(m):
+            why = (
+                f"{m.f}: the same factor {m.factor:.5g} per step was found in {m.steady} snapshots "
+                f"in a row{length}, alternating in sign from one to the next"
+            )
+            out.append(_alarm(m, why, 50.0 + m.steady, factor, onset))
     return out
+
+
+def _alarm(m: Mode, why: str, weight: float, factor: Estimate, onset: tuple[int, int]) -> Finding:
+    return Finding("runaway", "numerical", m.f, why, weight, factor, m.cells, onset)
+
+
+def _foretold(m: Mode, off: float, alarm: AlarmSection) -> bool:
+    """Whether a held pair grew as its rate says, by enough to tell."""
+    enough = max(m.grown, 2.0 * m.foretold) >= math.log(10.0)
+    return m.held > alarm.held and enough and off <= 0.1 + 0.05 * m.foretold
+
+
+def _short(m: Mode, evidence: Evidence, alarm: AlarmSection) -> bool:
+    """Whether a pair's own ripple is grid-scale.
+
+    In the bulk the little ripple of a pair may be another's, so its wavelength proves nothing; the
+    products of a resolved growth (its harmonics) are shorter and grow faster than it does.
+    """
+    if m.view != "ripple" or m.cells is None or m.cells > alarm.mode_cells or m.share < SHARE:
+        return False
+    return not any(
+        o.f == m.f
+        and o.view == m.view
+        and o.share > m.share
+        and 1.0 < o.factor < m.factor
+        and (o.cells is None or o.cells > _DOUBTFUL_CELLS)
+        for o in evidence.modes
+    )
+
+
+def _alternates(m: Mode, off: float) -> bool:
+    """Whether a held pair flips its sign as no resolved motion does, and grows nearly as foretold.
+
+    That is evidence at any wavelength, also in the bulk.
+    """
+    return (
+        m.odd and m.share >= _ODD_SHARE and m.foretold > 0.2 and off <= max(0.15, 0.5 * m.foretold)
+    )
+
+
+def _same_alternation(m: Mode) -> bool:
+    """Whether a clearly growing value that flips its sign came up again and again.
+
+    The vector of such a pair may still hold parts of larger, resolved motions, and so look
+    different from window to window; its value does not.
+    """
+    return (
+        m.odd
+        and m.steady >= _STEADY
+        and m.residual <= _STEADY_RESIDUAL
+        and m.share >= _STEADY_SHARE
+        and abs(complex(m.re, m.im)) >= _STEADY_VALUE
+    )
 
 
 def _mode_onset(m: Mode, evidence: Evidence, x: float) -> tuple[int, int]:

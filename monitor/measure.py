@@ -104,7 +104,9 @@ class Measurer:
             uneven=uneven,
             fresh=self._seen,
             modes=tuple(
-                sorted((m for r in readings for m in r.modes), key=lambda m: -m.held)[:_MODES]
+                sorted((m for r in readings for m in r.modes), key=lambda m: (-m.held, -m.steady))[
+                    :_MODES
+                ]
             ),
             bad_at=(bad.field, bad.part, bad.bad_at) if bad is not None else None,
         )

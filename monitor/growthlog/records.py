@@ -139,6 +139,7 @@ class Mode(msgspec.Struct, frozen=True, array_like=True, gc=False):
         where |mu - 1| is within its doubt.
     view: "ripple" or "bulk": the columns it was computed in.
     odd: a phase that no resolved motion has (negative real at an odd stride).
+    steady: snapshots in a row in which this Ritz value was found, within 1 %.
     """
 
     f: str
@@ -160,6 +161,7 @@ class Mode(msgspec.Struct, frozen=True, array_like=True, gc=False):
     grown: float = 0.0
     amp: float | None = None
     odd: bool = False
+    steady: int = 1
 
 
 class Line(msgspec.Struct, frozen=True, array_like=True, gc=False):

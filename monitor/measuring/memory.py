@@ -76,6 +76,7 @@ class Tracked:
     kept: bool = False
     held: int = 0
     grown: float = 0.0
+    steady: int = 1
 
 
 @dataclass
@@ -151,6 +152,7 @@ class _StoredTrack(msgspec.Struct, frozen=True, array_like=True):
     basis: Packed
     held: int
     grown: float
+    steady: int
 
 
 class _StoredMemory(msgspec.Struct, frozen=True):
@@ -211,12 +213,16 @@ def store(memory: Memory) -> bytes:
 
 
 def _stored_track(t: Tracked) -> _StoredTrack:
-    return _StoredTrack(t.value.real, t.value.imag, t.size, Packed.of(t.basis), t.held, t.grown)
+    return _StoredTrack(
+        t.value.real, t.value.imag, t.size, Packed.of(t.basis), t.held, t.grown, t.steady
+    )
 
 
 def _track(t: _StoredTrack) -> Tracked:
     basis = t.basis.array().astype(np.float32)
-    return Tracked(complex(t.real, t.imaginary), t.size, basis, held=t.held, grown=t.grown)
+    return Tracked(
+        complex(t.real, t.imaginary), t.size, basis, held=t.held, grown=t.grown, steady=t.steady
+    )
 
 
 def restore(data: bytes, sketch: SketchSpec) -> Memory:

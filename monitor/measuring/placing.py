@@ -25,6 +25,8 @@ _SHORTEST_SHARE = 0.01
 _WORST = 4
 # Longest wavelength of a pair whose size counts as contamination.
 _CONTAMINATING_CELLS = 8.0
+# A pair that has not persisted yet has to make up this much of the last difference.
+_TELLING_SHARE = 0.4
 # The size of a growing part is known within about this factor.
 _SIZE_DOUBT = 2.0
 
@@ -109,10 +111,14 @@ def tile_grid(r: Reading) -> TileGrid | None:
 def contamination(r: Reading) -> tuple[Estimate, Estimate]:
     """Share of the growing part in the field's variation: over the field, and in the worst tile
     (there too against the variation of the whole field, since a calm tile has none of its own)."""
+    # A vector that does not grow as its value says still holds parts of something else.
     sized = [
         m
         for m in r.modes
-        if m.amp is not None and m.cells is not None and m.cells < _CONTAMINATING_CELLS
+        if m.amp is not None
+        and m.cells is not None
+        and m.cells < _CONTAMINATING_CELLS
+        and (m.held or m.share >= _TELLING_SHARE)
     ]
     if not sized:
         return (Estimate(reason="no growing mode stands out"),) * 2

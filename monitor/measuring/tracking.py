@@ -29,6 +29,9 @@ _FEWEST = 3
 # grew as its rate foretold. From trials on runs of several solver libraries.
 _SAME_VECTOR = 0.9
 _SAME_RATE = 0.1
+_SAME_VALUE = 0.01
+# From as many snapshots with the same value on, a vector tells where the growth is.
+_LASTING = 5
 _OFF = 0.15
 _OFF_SHARE = 0.1
 # A pair is looked at if it grows, stands above the noise and is not mostly residual.
@@ -48,7 +51,7 @@ def find_modes(reading: Reading, stride: int | None, gridded: bool) -> list[Mode
     for view, kinds in VIEWS.items():
         if gridded or view == "bulk":
             out += _view(reading, view, kinds, stride)
-    return sorted(out, key=lambda m: (-m.held, -m.factor))
+    return sorted(out, key=lambda m: (-m.held, -m.steady, -m.factor))
 
 
 def _view(reading: Reading, view: str, kinds: tuple[str, ...], stride: int | None) -> list[Mode]:
@@ -84,8 +87,12 @@ def _view(reading: Reading, view: str, kinds: tuple[str, ...], stride: int | Non
 def compare(here: Tracked, track: deque[list[Tracked]], window: int) -> None:
     """Look for the same pair a whole window earlier, and take up its history of one snapshot ago.
 
-    track: pairs of the last snapshots, newest last. Fills match, gain, foretold, kept, held, grown.
+    track: pairs of the last snapshots, newest last. Fills match, gain, foretold, kept, held, grown
+    and steady.
     """
+    for old in track[-1] if track else ():
+        if abs(old.value - here.value) <= _SAME_VALUE * abs(here.value):
+            here.steady = max(here.steady, old.steady + 1)
     if len(track) < window:
         return
     rate = math.log(abs(here.value))
@@ -134,6 +141,7 @@ def _mode(
         gain=here.gain,
         foretold=here.foretold,
         grown=here.grown,
+        steady=here.steady,
         amp=amplitude,
         odd=bool(nearly or (negative and stride is not None and stride % 2 == 1)),
     )
@@ -156,7 +164,8 @@ def _shape(
     angles = wave_angles(pooled, noise, memory.axes)
     cells = growth.cells_per_wavelength(angles)
     energy = ripple_energy(per_tile, reading)
-    if here.held and cells is not None and float(energy.sum()) > 0.0:
+    lasting = here.held > 0 or here.steady >= _LASTING
+    if lasting and cells is not None and float(energy.sum()) > 0.0:
         reading.energy = energy
     sizes = [
         pooled[f"r{HIGH}.{a}"] / math.sin(angle / 2.0) ** HIGH
