@@ -28,6 +28,7 @@ from demo_runs.march import (
     check_fault,
     energy_box,
     into_place,
+    settled,
     wavelength,
 )
 from demo_runs.march import main as march_main
@@ -56,7 +57,7 @@ def _matrix() -> tuple[sp.csr_matrix, Array]:
 @cache
 def limit_step() -> float:
     """Largest stable time step of the healthy scheme, s."""
-    return 2.0 / waves.fastest(_matrix()[0])[0]
+    return settled(2.0 / waves.fastest(_matrix()[0])[0])
 
 
 def _closure(fault: str | None, dt: float) -> float:

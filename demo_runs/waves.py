@@ -14,7 +14,7 @@ import numpy as np
 import scipy.sparse as sp
 from scipy.sparse.linalg import eigsh
 
-from demo_runs.march import Array
+from demo_runs.march import Array, any_vector
 
 
 def gradient(shape: tuple[int, ...], spacing: float, axis: int) -> sp.csr_matrix:
@@ -44,13 +44,14 @@ def operator(
 
 def fastest(matrix: sp.csr_matrix) -> tuple[float, Array]:
     """omega_max and its mode."""
-    values, vectors = eigsh(matrix, k=1, which="LM")
+    values, vectors = eigsh(matrix, k=1, which="LM", v0=any_vector(matrix.shape[0]))
     return float(np.sqrt(values[0])), vectors[:, 0]
 
 
 def slowest(matrix: sp.csr_matrix, count: int) -> tuple[Array, Array]:
     """The `count` slowest modes that move: (omega, vectors). The constant one is left out."""
-    values, vectors = eigsh(matrix, k=count + 1, sigma=-1e-3 * matrix.diagonal().max())
+    shift = -1e-3 * matrix.diagonal().max()
+    values, vectors = eigsh(matrix, k=count + 1, sigma=shift, v0=any_vector(matrix.shape[0]))
     order = np.argsort(values)[1:]
     return np.sqrt(values[order]), vectors[:, order]
 
