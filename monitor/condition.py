@@ -361,7 +361,9 @@ def _modes(
     """Ritz pairs that persist between windows and grow as their factor foretells."""
     out = []
     for m in evidence.modes:
-        if _expected(math.log(m.factor), evidence, fields.get(m.f.split("[")[0])):
+        if m.factor <= 1.0 or _expected(
+            math.log(m.factor), evidence, fields.get(m.f.split("[")[0])
+        ):
             continue
         factor = Estimate(m.factor, m.low, m.high, 0.9)
         length = f", {m.cells:.1f} cells long" if m.cells is not None else ""

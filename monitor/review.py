@@ -120,6 +120,8 @@ class Review:
     deeds: tuple[Deed, ...]
     ended: str
     per: str
+    contamination: Estimate
+    local_contamination: Estimate
     cautions: tuple[str, ...] = ()
 
     @property
@@ -147,14 +149,6 @@ class Review:
     @property
     def field(self) -> str:
         return (self.told.verdict.field if self.told else "") or self.region.field
-
-    @property
-    def contamination(self) -> Estimate:
-        return _or_unknown(self.told.evidence.contamination if self.told else None)
-
-    @property
-    def local_contamination(self) -> Estimate:
-        return _or_unknown(self.told.evidence.local if self.told else None)
 
     @property
     def ruin(self) -> Estimate:
@@ -247,6 +241,10 @@ def summarise(contents: LogContents) -> Review:
     clean = pinned[-1] if pinned else (loose[-1] if loose else None)
     opened, pulses = _only(Opened, records), _only(PulseChange, records)
     last = records[-1] if records else None
+    growth = (
+        best_growth(snaps, turn) if turn else _or_unknown(told.verdict.factor if told else None)
+    )
+    share, local = shares(snaps, told, growth)
     review = Review(
         run=opened[-1].run if opened else "",
         pulse=pulses[-1].pulse if pulses else "arriving",
@@ -257,9 +255,7 @@ def summarise(contents: LogContents) -> Review:
         told=told,
         turn=turn,
         condition=snaps[-1].verdict.condition if snaps else "gathering",
-        growth=best_growth(snaps, turn)
-        if turn
-        else _or_unknown(told.verdict.factor if told else None),
+        growth=growth,
         region=find_region(heads.get(number), snaps, turn),
         clean=clean,
         later=loose[-1] if clean and loose and loose[-1].step > clean.step else None,
@@ -267,6 +263,8 @@ def summarise(contents: LogContents) -> Review:
         deeds=deeds(records),
         ended=last.why if isinstance(last, Closed) else "",
         per="step" if all(s.step is not None for s in snaps) else "snapshot",
+        contamination=share,
+        local_contamination=local,
     )
     return replace(review, cautions=(*_log_cautions(contents), *_cautions(review)))
 
@@ -286,12 +284,50 @@ def best_growth(snaps: Sequence[Snapshot], turn: Snapshot) -> Estimate:
     return best
 
 
+def shares(
+    snaps: Sequence[Snapshot], told: Snapshot | None, growth: Estimate
+) -> tuple[Estimate, Estimate]:
+    """Contamination and local contamination at `told`.
+
+    At an early alarm the growing part may not have a size of its own yet; then it is traced back,
+    at the growth factor, from the first later record of free growth that gives one.
+    """
+    if told is None:
+        return _or_unknown(None), _or_unknown(None)
+    here = told.evidence.contamination, told.evidence.local
+    factor = growth.value
+    known = any(e is not None and e.value is not None for e in here)
+    if known or not isinstance(factor, float | int) or factor <= 1.0:
+        return _or_unknown(here[0]), _or_unknown(here[1])
+    later = next(iter(_free(snaps, told)), None)
+    if later is None:
+        return _or_unknown(here[0]), _or_unknown(here[1])
+    back = math.exp(-(place(later) - place(told)) * math.log(factor))
+    return (
+        _scaled(later.evidence.contamination, back),
+        _scaled(later.evidence.local, back),
+    )
+
+
+def _scaled(estimate: Estimate | None, by: float) -> Estimate:
+    """An estimate times a number; those without a number stay as they are."""
+    whole = _or_unknown(estimate)
+    ends = (whole.value, whole.low, whole.high)
+    if not all(isinstance(e, float | int) for e in ends):
+        return whole
+    value, low, high = (float(e) * by for e in ends if isinstance(e, float | int))
+    return Estimate(value, low, high, whole.coverage)
+
+
 def find_region(head: Segment | None, snaps: Sequence[Snapshot], turn: Snapshot | None) -> Region:
     """Where it grew: the first box found on the cells from the alarm on, while the growth was
-    free; without one the box of the alarm's worst tile."""
+    free; without one the box of the alarm's worst tile.
+
+    A record that gives the growing part a size knows it apart from all else, so these come first.
+    """
     if turn is None:
         return Region()
-    for snapshot in (turn, *_free(snaps, turn)):
+    for snapshot in (*_free(snaps, turn), turn):
         evidence = snapshot.evidence
         if evidence.box is not None and evidence.where is not None:
             return Region(evidence.box, *evidence.where, "cells")

@@ -8,7 +8,7 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
-from monitor.growthlog.records import Box, Estimate, Worst
+from monitor.growthlog.records import Box, Estimate, Mode, Worst
 from monitor.measuring.memory import Place
 from monitor.measuring.reading import Reading
 from probes import locality
@@ -25,8 +25,11 @@ _SHORTEST_SHARE = 0.01
 _WORST = 4
 # Longest wavelength of a pair whose size counts as contamination.
 _CONTAMINATING_CELLS = 8.0
-# A pair that has not persisted yet has to make up this much of the last difference.
+# A pair that has not persisted yet has to make up this much of the last difference, to have come
+# up in as many snapshots, and to grow by this factor per snapshot.
 _TELLING_SHARE = 0.4
+_TELLING_STEADY = 3
+_TELLING_VALUE = 1.05
 # The size of a growing part is known within about this factor.
 _SIZE_DOUBT = 2.0
 
@@ -118,7 +121,7 @@ def contamination(r: Reading) -> tuple[Estimate, Estimate]:
         if m.amp is not None
         and m.cells is not None
         and m.cells < _CONTAMINATING_CELLS
-        and (m.held or m.share >= _TELLING_SHARE)
+        and (m.held or _telling(m))
     ]
     if not sized:
         return (Estimate(reason="no growing mode stands out"),) * 2
@@ -131,6 +134,16 @@ def contamination(r: Reading) -> tuple[Estimate, Estimate]:
     if total > 0.0:
         local *= math.sqrt(float(r.energy.max()) / total * len(r.energy))
     return _about(ratio), _about(local)
+
+
+def _telling(m: Mode) -> bool:
+    """Whether a pair that has not persisted over a window says how large the growing part is: it
+    makes up much of the difference, came up before, and is no neutral motion."""
+    return (
+        m.share >= _TELLING_SHARE
+        and m.steady >= _TELLING_STEADY
+        and abs(complex(m.re, m.im)) >= _TELLING_VALUE
+    )
 
 
 def _about(value: float) -> Estimate:

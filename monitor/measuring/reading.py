@@ -113,11 +113,11 @@ def read_change(reading: Reading, change: Scaled, gridded: bool) -> None:
     memory, groups = reading.memory, reading.groups
     per_tile = tile_levels(memory, change.parts, reading.positions)
     pooled = {n: growth.pool(per_tile[:, g], reading.positions[:, g]) for n, g in groups.items()}
-    energy = ripple_energy(per_tile, reading)
+    energy, largest = ripple_energy(per_tile, reading)
     count = sum(reading.positions[:, groups[f"r{HIGH}.{a}"]] for a in memory.axes)
     level = np.sqrt(np.divide(energy, count, out=np.zeros_like(energy), where=count > 0))
     reading.energy = energy
-    reading.tile_levels = _ln_each(level) + change.exponent * math.log(2.0)
+    reading.tile_levels = _ln_each(level) + math.log(largest) + change.exponent * math.log(2.0)
     reading.before = memory.tile_levels[-1] if memory.tile_levels else None
     ripple = cells = None
     if gridded:
@@ -170,14 +170,15 @@ def tile_levels(memory: Memory, parts: tuple[Array, ...], positions: Array) -> A
     )
 
 
-def ripple_energy(per_tile: Array, reading: Reading) -> Array:
-    """(tiles,): sum of squared ripple over the axes; zero where that is beyond the number type."""
-    groups, out = reading.groups, np.zeros(per_tile.shape[0])
-    with np.errstate(over="ignore"):
-        for a in reading.memory.axes:
-            g = groups[f"r{HIGH}.{a}"]
-            out += per_tile[:, g] ** 2 * reading.positions[:, g]
-    return np.where(np.isfinite(out), out, 0.0)
+def ripple_energy(per_tile: Array, reading: Reading) -> tuple[Array, float]:
+    """(tiles,): sum of squared ripple over the axes, in units of the square of the largest level,
+    and that level: near the largest numbers the squares themselves would overflow."""
+    ripples = [reading.groups[f"r{HIGH}.{a}"] for a in reading.memory.axes]
+    part = per_tile[:, ripples]
+    largest = float(np.abs(part).max(initial=0.0))
+    if largest == 0.0 or not math.isfinite(largest):
+        return np.zeros(per_tile.shape[0]), 1.0
+    return ((part / largest) ** 2 * reading.positions[:, ripples]).sum(axis=1), largest
 
 
 def floor_in(floor: float | None, exponent: int) -> float:

@@ -74,7 +74,7 @@ def _view(reading: Reading, view: str, kinds: tuple[str, ...], stride: int | Non
     tracked, out = [], []
     for pair in chosen:
         size = math.log(pair.size) + exponent * math.log(2.0)
-        here = Tracked(pair.value, size, pair.vectors(vectors).astype(np.float32))
+        here = Tracked(pair.value, size, _direction(pair.vectors(vectors)))
         compare(here, track, window)
         tracked.append(here)
         out.append(_mode(reading, view, pair, here, stride))
@@ -82,6 +82,11 @@ def _view(reading: Reading, view: str, kinds: tuple[str, ...], stride: int | Non
     while len(track) > window:
         track.popleft()
     return out
+
+
+def _direction(vectors: Array) -> NDArray[np.float32]:
+    """The vectors at unit size, which single precision holds whatever their own size is."""
+    return (vectors / max(float(np.abs(vectors).max(initial=0.0)), 1e-300)).astype(np.float32)
 
 
 def compare(here: Tracked, track: deque[list[Tracked]], window: int) -> None:
@@ -163,7 +168,7 @@ def _shape(
     noise = float(np.linalg.norm(pair.weights)) * floor_in(reading.record.floor, top)
     angles = wave_angles(pooled, noise, memory.axes)
     cells = growth.cells_per_wavelength(angles)
-    energy = ripple_energy(per_tile, reading)
+    energy, _ = ripple_energy(per_tile, reading)
     lasting = here.held > 0 or here.steady >= _LASTING
     if lasting and cells is not None and float(energy.sum()) > 0.0:
         reading.energy = energy

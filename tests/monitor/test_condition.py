@@ -227,3 +227,17 @@ def test_the_state_can_be_stored() -> None:
         stored = msgspec.msgpack.decode(packed, type=condition.State)
         stored, other = condition.decide(stored, evidence, i, i, ALARM, {})
         assert one == other
+
+
+def test_a_factor_that_rounds_to_one_is_no_growth() -> None:
+    """A factor of exactly one, as the log may round it, neither alarms nor divides by zero."""
+    assert one_mode(factor=1.0, odd=True, steady=9).condition == "quiet"
+
+
+def test_a_value_that_comes_up_again_and_again_alarms() -> None:
+    """An alternating value found five times in a row, with a small residual, is enough; found less
+    often, or positive, or hardly growing, it is not."""
+    again = {"held": 0, "odd": True, "re": -1.6, "steady": 5, "residual": 0.01, "share": 0.1}
+    assert one_mode(**again).condition == "runaway"
+    for less in ({"steady": 4}, {"odd": False}, {"re": -1.1}, {"residual": 0.2}, {"share": 1e-4}):
+        assert one_mode(**{**again, **less}).condition == "quiet"

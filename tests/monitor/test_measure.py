@@ -179,3 +179,24 @@ def test_distance_of_two_sketches() -> None:
     assert resketch_distance(one, sketch({"u": u.copy()}, 0, None, MaskBook())) == 0.0
     assert resketch_distance(one, sketch({"u": u + 1e-9}, 0, None, MaskBook())) > 0.0
     assert math.isinf(resketch_distance(one, sketch({"u": u[:20]}, 0, None, MaskBook())))
+
+
+def test_nothing_fails_up_to_overflow() -> None:
+    """A zigzag that doubles from round-off until it overflows is measured all the way, and ends as
+    overflowed; no estimate fails on huge numbers."""
+    x = np.arange(48)
+    zigzag = np.where((x[:, None] + x) % 2, 1.0, -1.0)
+    smooth = np.sin(np.pi * x / 47)[:, None] * np.sin(np.pi * x / 47)
+    rng = np.random.default_rng(3141)
+    shape = zigzag * (1.0 + 0.1 * rng.standard_normal(zigzag.shape))
+
+    def run():
+        for i in range(60):
+            with np.errstate(over="ignore", invalid="ignore"):
+                yield i, float(i), {"u": smooth + 1e-14 * shape * np.exp2(20.0 * i)}
+
+    rows = list(follow(run()))
+    assert rows[-1][2].condition == "overflowed"
+    late = [e for s, e, _, _ in rows if 20 < s < 50]
+    assert all(e.channels[0].ripple is not None for e in late)
+    assert all(e.box is not None for e in late)
