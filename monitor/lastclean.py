@@ -7,7 +7,7 @@ from collections import Counter
 from collections.abc import Sequence
 from dataclasses import dataclass
 
-from monitor.growthlog.records import PinRecord, Snapshot
+from monitor.growthlog.records import Channel, PinRecord, Snapshot
 
 # A snapshot may be restarted from when its growing part is below the larger of this share of the
 # field's variation and a hundred rounding errors of the stored numbers.
@@ -68,12 +68,49 @@ def clean_reason(snapshot: Snapshot, turn: Snapshot | None, before: Sequence[Sna
     limit = tolerance(snapshot)
     if share is not None and isinstance(share.value, float | int) and share.value < limit:
         return f"growing part {share.value:.1e} of the field's variation, below {limit:.0e}"
+    back = traced_back(snapshot, turn)
+    if back is not None and back < limit:
+        return (
+            f"growing part at most {back:.1e} of the field's variation, traced back from the "
+            f"alarm at its growth, below {limit:.0e}"
+        )
     # An overflow out of nothing: the snapshot just before it had grown unseen, earlier ones are
     # the best there is.
     sudden = onset is None and share is None
     if sudden and snapshot.verdict.condition == "quiet" and snapshot is not before[-1]:
         return "judged quiet, and not the last one before the trouble"
     return ""
+
+
+def traced_back(snapshot: Snapshot, turn: Snapshot) -> float | None:
+    """Most that the growing part can have been of the field's variation at an earlier snapshot.
+
+    What it is at the alarm (its upper end; without one, all of the grid-scale ripple there) shrinks
+    backwards at the lower end of the factor. None where the alarm knows no such factor.
+    """
+    factor = turn.verdict.factor
+    low = factor.low if factor is not None else None
+    if not isinstance(low, float | int) or not low > 1.0:
+        return None
+    share = turn.evidence.local
+    high = share.high if share is not None else None
+    most = (
+        float(high)
+        if isinstance(high, float | int)
+        else max((_all_ripple(c) for c in turn.evidence.channels), default=math.inf)
+    )
+    return most * math.exp(-(place(turn) - place(snapshot)) * math.log(low))
+
+
+# One tile may hold this many times the ripple of the whole field's rms.
+_CONCENTRATED = 30.0
+
+
+def _all_ripple(channel: Channel) -> float:
+    """Ripple of the difference as a share of the field's variation, in the worst tile."""
+    if channel.ripple is None or channel.vary is None:
+        return 0.0 if channel.ripple is None else math.inf
+    return _CONCENTRATED * math.exp(min(300.0, channel.ripple - channel.vary))
 
 
 def kept_pins(pins: Sequence[PinRecord]) -> list[PinRecord]:

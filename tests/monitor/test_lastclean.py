@@ -5,9 +5,17 @@ from __future__ import annotations
 import math
 
 import pytest
+from msgspec.structs import replace
 
 from monitor.growthlog.records import Estimate, PinRecord, Snapshot
-from monitor.lastclean import clean_files, clean_pins, clean_reason, kept_pins, tolerance
+from monitor.lastclean import (
+    clean_files,
+    clean_pins,
+    clean_reason,
+    kept_pins,
+    tolerance,
+    traced_back,
+)
 from tests.monitor.made_log import alarmed_run, evidence, snap
 
 
@@ -30,10 +38,37 @@ def pin(name: str, step: int | None, state: str = "kept", seq: int = 900) -> Pin
     )
 
 
-def test_the_last_clean_file_lies_before_the_lower_end_of_the_onset() -> None:
-    """Onset between 280 and 420, snapshots every 20 steps: the last clean one is that of 260."""
+def test_without_a_size_the_last_clean_file_lies_before_the_onset() -> None:
+    """Onset between 280 and 420, snapshots every 20 steps, nothing known of how large the growing
+    part is: the last clean one is that of 260."""
     snaps, turn = run_of(alarmed_run())
-    assert clean_files(snaps, turn)[-1].step == 260
+    assert turn is not None
+    blind = replace(turn, evidence=evidence(), verdict=replace(turn.verdict, factor=None))
+    early = [replace(s, evidence=evidence()) for s in snaps if s.seq < turn.seq]
+    assert clean_files([*early, blind], blind)[-1].step == 260
+
+
+def test_the_growing_part_is_traced_back_from_the_alarm() -> None:
+    """At the alarm (step 660) it is at most 2e-6 and grows by at least 1.0187 a step: 1e-8 lies
+    ln(200) / ln(1.0187) = 287 steps back, so that step 360 is clean and 380 is not."""
+    snaps, turn = run_of(alarmed_run())
+    assert turn is not None
+    assert clean_files(snaps, turn)[-1].step == 360
+    at_360 = next(s for s in snaps if s.step == 360)
+    assert traced_back(at_360, turn) == pytest.approx(2e-6 / (1.02 - 0.004 / 3) ** 300, rel=1e-6)
+
+
+def test_all_the_ripple_bounds_a_part_without_a_size() -> None:
+    """Where the alarm gives no size, the whole ripple, in one tile, is the most it can be; without
+    levels or without growth nothing can be traced back."""
+    snaps, turn = run_of(alarmed_run())
+    assert turn is not None
+    channel = replace(turn.evidence.channels[0], ripple=-18.0, vary=2.0)
+    sized = replace(turn, evidence=replace(turn.evidence, local=None, channels=(channel,)))
+    bound = traced_back(turn, sized)
+    assert bound == pytest.approx(30.0 * math.exp(-20.0))
+    flat = replace(sized, verdict=replace(turn.verdict, factor=Estimate(1.01, 0.99, 1.03, 0.9)))
+    assert traced_back(snaps[0], flat) is None
 
 
 def test_a_swelling_snapshot_below_the_tolerance_is_clean_too() -> None:
@@ -64,9 +99,9 @@ def test_a_name_used_again_is_not_offered() -> None:
 
 
 def test_a_pin_between_two_judged_snapshots_is_judged_by_the_next() -> None:
-    """Checkpoints with a cadence of their own: step 255 is clean as 260 is, 275 is not."""
+    """Checkpoints with a cadence of their own: step 255 is clean as 260 is, 375 is not."""
     snaps, turn = run_of(alarmed_run())
-    got = clean_pins([pin("a", 255), pin("b", 275), pin("c", None)], snaps, turn)
+    got = clean_pins([pin("a", 255), pin("b", 375), pin("c", None)], snaps, turn)
     assert [c.step for c in got] == [255]
 
 

@@ -160,7 +160,7 @@ def test_a_kept_pin_is_the_last_clean_snapshot() -> None:
         "sha256": "cd" * 32,
     }
     assert review.later is not None
-    assert review.later.step == 260
+    assert review.later.step == 360
 
 
 def test_a_pin_taken_after_the_onset_is_not_clean() -> None:
@@ -168,7 +168,7 @@ def test_a_pin_taken_after_the_onset_is_not_clean() -> None:
     late = PinRecord(seq=70, at=200.0, pin="p", state="kept", folder="pins/p", files=(), step=640)
     clean = summarise(contents([*alarmed_run(), late])).clean
     assert clean is not None
-    assert (clean.step, clean.pinned) == (260, False)
+    assert (clean.step, clean.pinned) == (360, False)
 
 
 def test_a_quiet_run_is_told_without_an_alarm() -> None:
