@@ -21,8 +21,10 @@ come, can be missed.
 """,
     "growth": f"""
 Factor per step by which the change from snapshot to snapshot grows, fitted to the last {WINDOW}
-snapshots. Full: ripple, the grid-scale part. Dotted: bulk, everything. The dashed line is one:
-above it something grows. On the axis: k kept checkpoint, o==o when the growth began, A alarm.
+snapshots. Full: ripple, the grid-scale part. Dotted: bulk, everything. Mode: the factor of the one
+growing part that came up longest, which may still be hidden under larger ones that do not grow. The
+dashed line is one: above it something grows. On the axis: k kept checkpoint, o==o when the growth
+began, A alarm.
 
 Do not trust a few points above one: a start, a source or an arriving wave raises both. The verdict
 asks for a factor that holds.

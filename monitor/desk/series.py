@@ -19,8 +19,11 @@ Array = NDArray[np.float64]
 # The factor at a snapshot is fitted to the levels of this many, itself the last.
 WINDOW = 8
 
+# A mode's factor is drawn once it has been found in as many snapshots in a row.
+_STEADY = 3
+
 _X, _AT, _STRIDE = range(3)
-_BULK, _RIPPLE, _OWN, _FLOOR, _VARY = range(5)
+_BULK, _RIPPLE, _OWN, _FLOOR, _VARY, _MODE = range(6)
 _START = 256
 _PACE_OVER = 16
 
@@ -80,14 +83,18 @@ class Series:
         evidence = snapshot.evidence
         self.uneven = self.uneven or evidence.uneven
         self._base.set(row, (x, snapshot.mtime or snapshot.at, float(evidence.stride or 1)))
+        modes: dict[str, float] = {}
+        for mode in evidence.modes:
+            if mode.held or mode.steady >= _STEADY:
+                modes.setdefault(mode.f, mode.factor)
         for channel in evidence.channels:
-            self._take(channel, row)
+            self._take(channel, row, modes.get(channel.f))
 
-    def _take(self, channel: Channel, row: int) -> None:
+    def _take(self, channel: Channel, row: int, mode: float | None) -> None:
         table = self._fields.get(channel.f)
         if table is None:
-            table = self._fields[channel.f] = _Table(5)
-        levels = (channel.bulk, channel.ripple, channel.own, channel.floor, channel.vary)
+            table = self._fields[channel.f] = _Table(6)
+        levels = (channel.bulk, channel.ripple, channel.own, channel.floor, channel.vary, mode)
         table.set(row, tuple(math.nan if v is None else v for v in levels))
         if channel.top is not None:
             self.top[channel.f] = channel.top
@@ -114,6 +121,10 @@ class Series:
     def floor(self, field: str) -> Array:
         """Ripple that rounding in storage alone would make."""
         return self._column(field, _FLOOR)
+
+    def mode(self, field: str) -> Array:
+        """Factor per step of the mode that has persisted longest, NaN where none has."""
+        return self._column(field, _MODE)
 
     def vary(self, field: str) -> Array:
         """Size of the field's variation."""

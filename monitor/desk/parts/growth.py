@@ -1,4 +1,4 @@
-"""Growth factor per step of ripple and bulk over the run."""
+"""Growth factor per step of ripple, bulk and the longest-lived mode over the run."""
 
 from __future__ import annotations
 
@@ -23,15 +23,23 @@ class GrowthPart(CurvePart):
     def curves(self, scene: Scene, stretch: Stretch) -> list[Curve]:
         bulk = stretch.series.factors(scene.field, ripple=False)
         ripple = stretch.series.factors(scene.field, ripple=True)
-        return [Curve(bulk, "bulk", "o", dotted=True), Curve(ripple, "ripple", "*")]
+        mode = stretch.series.mode(scene.field)
+        return [
+            Curve(bulk, "bulk", "o", dotted=True),
+            Curve(ripple, "ripple", "*"),
+            Curve(mode, "mode", "x"),
+        ]
 
     def facts(self, scene: Scene, stretch: Stretch, curves: list[Curve]) -> list[tuple[str, str]]:
-        bulk, ripple = curves
-        return [
+        bulk, ripple, mode = curves
+        out = [
             (f"of {scene.which_field} per {scene.story.per}", ""),
             (f"ripple {_latest(ripple.values)}", "ripple"),
             (f"bulk {_latest(bulk.values)}", "bulk"),
         ]
+        if np.isfinite(mode.values[-1]):
+            out.append((f"mode {_latest(mode.values)}", "mode"))
+        return out
 
     def levels(self, scene: Scene, stretch: Stretch) -> list[tuple[float, str]]:
         return [(1.0, "level")]
@@ -45,6 +53,8 @@ class GrowthPart(CurvePart):
         lows, highs = [1.0], [1.0]
         for low, high in spans:
             seen = np.flatnonzero(np.isfinite(low))
+            if not seen.size:
+                continue
             lows += [float(np.percentile(low[seen], 4)), float(low[seen[-1]])]
             highs += [float(np.percentile(high[seen], 96)), float(high[seen[-1]])]
         lo, hi = max(0.0, min(lows)), min(max(highs), _LARGEST)

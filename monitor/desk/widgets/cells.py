@@ -14,7 +14,19 @@ from monitor.desk.parts.part import Part, Scene
 from monitor.desk.sheet import Sheet
 
 _STYLES = (
-    *("rule", "heading", "chosen", "label", "dim", "axis", "level", "ripple", "bulk", "size"),
+    *(
+        "rule",
+        "heading",
+        "chosen",
+        "label",
+        "dim",
+        "axis",
+        "level",
+        "ripple",
+        "bulk",
+        "mode",
+        "size",
+    ),
     *("good", "gathering", "quiet", "swelling", "runaway", "overflowed"),
     *(f"banner-{c}" for c in ("gathering", "quiet", "swelling", "runaway", "overflowed")),
     *(f"act-{c}" for c in ("gathering", "quiet", "swelling", "runaway", "overflowed")),
