@@ -15,6 +15,7 @@ from pathlib import Path, PurePosixPath
 from msgspec.structs import replace
 
 from monitor.namereading import NameGroup, group_names, merge_fields
+from probes.arrivals.patterns import Pattern
 from probes.errors import ArrivalError
 from probes.wire import Examine, Examined, Failed, Reply, Request
 
@@ -154,9 +155,19 @@ def _look(
     reply = ask(Examine(path=str(folder.resolve() / name)))
     cadence = _cadence(group, times)
     if isinstance(reply, Examined):
-        return Sight(group, cadence, reply)
+        return Sight(group, cadence, _named_as_guard_does(reply, group, name))
     failure = reply.what if isinstance(reply, Failed) else "no answer"
     return Sight(group, cadence, None, failure)
+
+
+def _named_as_guard_does(seen: Examined, group: NameGroup, name: str) -> Examined:
+    """A nameless array goes by the stem of its file, which holds the step: guard names it after
+    the words that all files share."""
+    stem = PurePosixPath(name).stem
+    if len(seen.fields) != 1 or seen.fields[0][0] != stem:
+        return seen
+    shared = Pattern.of(group.pattern, "/").own_name
+    return replace(seen, fields=((shared, *seen.fields[0][1:]),))
 
 
 def _cadence(group: NameGroup, times: dict[str, float]) -> float | None:

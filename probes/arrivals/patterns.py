@@ -115,7 +115,8 @@ class Pattern:
 
     @cached_property
     def own_name(self) -> str:
-        """The literal words of the file name: "h" for "out/h_{step}.npy"."""
+        """Name of the one nameless array of a file: the literal words of the file name ("h" for
+        "out/h_{step}.npy"), "field" where there are none."""
         stem = os.path.splitext(self.levels[-1].text)[0]
         words = re.split(r"\{[a-z]+\}|[*?]", stem)
-        return "_".join(w for w in (word.strip("_-.") for word in words) if w)
+        return "_".join(w for w in (word.strip("_-.") for word in words) if w) or "field"

@@ -8,13 +8,27 @@ from collections.abc import Callable
 from itertools import product
 from pathlib import Path
 
+import numpy as np
 import pytest
 
-from monitor.config import load
+from monitor.config import load, watch_spec
 from monitor.proposal import describe, propose
 from monitor.scout import MOST_EXAMINED, scout
+from probes.child import Child
 from probes.errors import ArrivalError
-from probes.wire import Examine, Examined, Failed, Reply, Request
+from probes.spec import SnapshotSpec, WatchSpec
+from probes.wire import (
+    Configure,
+    Examine,
+    Examined,
+    Failed,
+    Look,
+    Looked,
+    ReadSnapshot,
+    Reply,
+    Request,
+    Sketched,
+)
 
 
 def fill(folder: Path, names: list[str], spacing: float = 2.0) -> None:
@@ -188,3 +202,29 @@ def test_odd_names_give_valid_toml(tmp_path: Path) -> None:
     fill(tmp_path, [f"{odd}{s}.npy" for s in (1, 2, 3)])
     settings = tomllib.loads(propose(scout(tmp_path, NPY)))
     assert settings["snapshots"]["pattern"] == 'T"\x07?1??_{step}.npy'
+
+
+@pytest.mark.parametrize(("stem", "field"), [("field_{:06d}", "field"), ("{:06d}", "field")])
+def test_a_nameless_array_is_proposed_as_guard_finds_it(
+    stem: str, field: str, tmp_path: Path
+) -> None:
+    """With real files, quiet for long, and the real reader, all snapshots hold that field."""
+    for step in range(0, 50, 10):
+        file = tmp_path / f"{stem.format(step)}.npy"
+        np.save(file, np.full((9, 8), float(step)))
+        os.utime(file, (1000.0 + step, 1000.0 + step))
+    child = Child()
+    watch = WatchSpec(folder=str(tmp_path), snapshots=SnapshotSpec(pattern=("*",)))
+    child.answer(Configure(watch=watch))
+    path = tmp_path / "stepwarden.toml"
+    path.write_text(propose(scout(tmp_path, child.answer)), encoding="utf-8")
+    settings = load(path)
+    assert list(settings.fields) == [field]
+    child.answer(Configure(watch=watch_spec(settings, tmp_path)))
+    looked = child.answer(Look())
+    assert isinstance(looked, Looked)
+    for arrival in looked.arrivals:
+        read = child.answer(ReadSnapshot(arrival=arrival))
+        assert isinstance(read, Sketched)
+        assert [b.field for b in read.blocks] == [field]
+    assert len(looked.arrivals) == 5

@@ -55,10 +55,15 @@ def test_absolute_pattern_and_literal_name() -> None:
 
 @pytest.mark.parametrize(
     ("text", "name"),
-    [("out/h_{step}.npy", "h"), ("T_?.npy", "T"), ("{step}.npy", ""), ("u_{step}_v.npy", "u_v")],
+    [
+        ("out/h_{step}.npy", "h"),
+        ("T_?.npy", "T"),
+        ("{step}.npy", "field"),
+        ("u_{step}_v.npy", "u_v"),
+    ],
 )
 def test_own_name(text: str, name: str) -> None:
-    """The literal words of a file name name its field."""
+    """The literal words of a file name name its field; without any it is called "field"."""
     assert Pattern.of(text, "/r").own_name == name
 
 
