@@ -25,9 +25,12 @@ from monitor.growthlog.records import (
     Verdict,
 )
 from probes import forecast
+from probes.growth import Fit, fit_line, late_slope
 from probes.onset import rising, straight_rise
 from probes.spec import FieldSpec
 
+# Quiet snapshots after which suspicion is dropped.
+_SUSPICION = 2
 # Levels kept per field; older ones are thinned by dropping every second.
 _KEPT = 512
 # A level has to stand this far above its rounding floor (in ln) to count.
@@ -42,6 +45,15 @@ _STEADY = 5
 _STEADY_RESIDUAL = 0.05
 _STEADY_SHARE = 0.03
 _STEADY_VALUE = 1.25
+# A resolved growth, seen in the bulk of the last snapshots, drags products of itself along: with
+# quadratic and cubic terms they are two and three times shorter and grow two and three times as
+# fast. Growth up to so many times as fast as the bulk, which rises by at least this (ln) on a
+# straight line and is no ripple itself, is explained by it.
+_PARENT_POINTS = 7
+_PARENT_RISE = math.log(1.8)
+_PARENT_STRAIGHT = 0.1
+_PARENT_FASTER = 3.4
+_PARENT_OVER_RIPPLE = 1.0
 # Longest wavelength, in cells, up to which growth is suspicious though not damning.
 _DOUBTFUL_CELLS = 6.5
 _DOUBLE_LARGEST = 709.78
@@ -109,7 +121,7 @@ def decide(
         *_collapsing(state.dts),
         *(f for name in series for f in _lines(name, series[name], evidence, alarm, fields)),
         *_tile_line(evidence, alarm, x),
-        *_modes(evidence, alarm, fields, x),
+        *_modes(evidence, series, alarm, fields, x),
     ]
     return _settle(state, evidence, findings, alarm)
 
@@ -125,7 +137,8 @@ def _settle(
     condition, calm = called, 0
     if ladder.index(called) < ladder.index(state.condition) and state.condition != "gathering":
         calm = state.calm + 1
-        if state.condition == "overflowed" or calm < alarm.calm:
+        needed = _SUSPICION if state.condition == "swelling" else alarm.calm
+        if state.condition == "overflowed" or calm < needed:
             condition = state.condition
         else:
             calm = 0
@@ -135,7 +148,7 @@ def _settle(
         kind = state.kind
     why = best.why if best is not None else ""
     if condition != called:
-        why = f"{condition} until {alarm.calm} quiet snapshots have passed ({calm} so far)"
+        why = f"{condition} until {needed} quiet snapshots have passed ({calm} so far)"
     verdict = Verdict(condition=condition, kind=kind, alarmed=alarmed, why=why)
     if best is not None:
         verdict = msgspec.structs.replace(
@@ -254,21 +267,22 @@ def _lines(
     over = y > floor + OVER_FLOOR
     if not over[-1]:
         return []
-    recent = _cells_of_last_decade(y, s.cells[-tail:])
+    recent = _recent_cells(y, s.cells[-tail:], alarm.decades * math.log(10.0))
     cells = float(np.median(recent[-3:])) if recent else None
     # A front that steepens gets shorter while it rises; an amplified error keeps its wavelength.
     short = cells is not None and max(recent) <= min(alarm.cells, 1.3 * min(recent))
     doubtful = cells is not None and cells <= _DOUBTFUL_CELLS
     spec = fields.get(name.split("[")[0])
     line = straight_rise(x, y, over, alarm.decades * math.log(10.0), alarm.straight)
-    if line is not None and short and not _expected(line.fit.slope, evidence, spec):
-        factor = _factor(line.fit.slope, line.fit.error)
+    if line is not None and short and not _explained(line.fit, s, evidence, spec):
+        slope, low, high = late_slope(x[line.start :], y[line.start :])
+        factor = Estimate(math.exp(slope), math.exp(low), math.exp(high), 0.9)
         why = (
             f"{name}: grid-scale ripple grew ×{math.exp(line.fit.rise):.3g} on a straight line "
-            f"over {line.fit.points} snapshots, {math.exp(line.fit.slope):.5g} per step, "
+            f"over {line.fit.points} snapshots, {factor.value:.5g} per step, "
             f"{cells:.1f} cells long"
         )
-        onset = _onset(x, y, floor, line.start, line.fit.slope)
+        onset = _onset(x, y, floor, line.start, slope)
         return [Finding("runaway", "numerical", name, why, line.fit.rise, factor, cells, onset)]
     found = rising(x, y, alarm.run_length)
     if found is None or found.fit.rise < math.log(3.0):
@@ -278,7 +292,7 @@ def _lines(
         f"{name}: grid-scale ripple grows, ×{math.exp(found.fit.rise):.3g} over "
         f"{found.fit.points} snapshots"
     )
-    if not doubtful or _expected(found.fit.slope, evidence, spec):
+    if not doubtful or _explained(found.fit, s, evidence, spec):
         why = what + (f", at a resolved {cells:.1f} cells" if cells is not None else "")
         return [Finding("quiet", "resolved", name, why, 0.0, factor, cells)]
     onset = _onset(x, y, floor, found.start, found.fit.slope)
@@ -296,10 +310,10 @@ def _lines(
     ]
 
 
-def _cells_of_last_decade(y: np.ndarray, cells: tuple[float | None, ...]) -> list[float]:
-    """Wavelengths of the latest snapshots, back to where the level was ten times lower (3 at least
+def _recent_cells(y: np.ndarray, cells: tuple[float | None, ...], fall: float) -> list[float]:
+    """Wavelengths of the latest snapshots, back to where the level was lower by `fall` (3 at least
     where there are as many)."""
-    lower = np.flatnonzero(y <= y[-1] - math.log(10.0))
+    lower = np.flatnonzero(y <= y[-1] - fall)
     first = min(int(lower[-1]) if lower.size else 0, len(y) - 3)
     return [c for c in cells[max(0, first) :] if c is not None]
 
@@ -315,6 +329,26 @@ def _expected(slope: float, evidence: Evidence, spec: FieldSpec | None) -> bool:
     if spec is None or spec.growth_per_time <= 0.0 or not evidence.dt:
         return False
     return slope / evidence.dt <= 1.2 * spec.growth_per_time
+
+
+def _explained(fit: Fit, s: Series, evidence: Evidence, spec: FieldSpec | None) -> bool:
+    """Whether a rise of the ripple is declared, or goes along with a resolved growth."""
+    return _expected(fit.slope, evidence, spec) or _goes_along(fit.slope, s, fit.points)
+
+
+def _goes_along(slope: float, s: Series, points: int) -> bool:
+    """Whether the bulk of the last `points` snapshots (seven at least) shows a resolved growth that
+    ripple growing with this slope may be a product of."""
+    points = max(points, _PARENT_POINTS)
+    x, bulk = s.x[-points:], s.bulk[-points:]
+    ripple = s.ripple[-1]
+    if len(x) < _PARENT_POINTS or any(v is None for v in bulk) or ripple is None:
+        return False
+    y = np.array(bulk, dtype=float)
+    parent = fit_line(np.array(x), y)
+    grows = parent.rise >= _PARENT_RISE and parent.rms <= _PARENT_STRAIGHT * parent.rise
+    over = y[-1] - ripple > _PARENT_OVER_RIPPLE
+    return bool(grows and over and slope <= _PARENT_FASTER * parent.slope)
 
 
 def _onset(
@@ -356,7 +390,11 @@ def _tile_line(evidence: Evidence, alarm: AlarmSection, x: float) -> list[Findin
 
 
 def _modes(
-    evidence: Evidence, alarm: AlarmSection, fields: Mapping[str, FieldSpec], x: float
+    evidence: Evidence,
+    series: Mapping[str, Series],
+    alarm: AlarmSection,
+    fields: Mapping[str, FieldSpec],
+    x: float,
 ) -> list[Finding]:
     """Ritz pairs that persist between windows and grow as their factor foretells."""
     out = []
@@ -381,7 +419,8 @@ def _modes(
                 f"{m.f}: a mode persists over {m.held} snapshots and grows {m.factor:.5g} per "
                 f"step{length}"
             )
-            if _short(m, evidence, alarm):
+            along = _goes_along(math.log(m.factor), series[m.f], m.held)
+            if _short(m, evidence, alarm) and not along:
                 out.append(_alarm(m, why, 100.0 + m.held, factor, onset))
             else:
                 out.append(Finding("quiet", "resolved", m.f, why, 1.0, factor, m.cells))

@@ -69,12 +69,12 @@ class AlarmSection(Section, frozen=True, kw_only=True):
     cells: longest wavelength that counts as grid-scale.
     mode_cells: the same for a single mode, whose wavelength is known better.
     held: snapshots over which a Ritz pair must persist.
-    calm: quiet snapshots after which `swelling` falls back.
+    calm: quiet snapshots after which `runaway` falls back (its alarm stays).
     """
 
     run_length: float = 1e5
     decades: float = 2.0
-    straight: float = 0.04
+    straight: float = 0.03
     cells: float = 4.1
     mode_cells: float = 3.5
     held: int = 6

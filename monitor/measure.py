@@ -154,12 +154,12 @@ class Measurer:
         # What is kept is rounded as it is stored, so that a restored memory is the same.
         memory.differences.append(change.single())
         memory.tile_levels.append(_single(reading.tile_levels))
-        memory.tile_floors.append(_single(reading.tile_floors))
+        memory.tile_bulk.append(_single(reading.tile_bulk))
         while len(memory.differences) > self._settings.estimate.krylov + 1:
             memory.differences.popleft()
         while len(memory.tile_levels) > self._settings.estimate.history:
             memory.tile_levels.popleft()
-            memory.tile_floors.popleft()
+            memory.tile_bulk.popleft()
 
     def _uneven(self) -> bool:
         """Whether the strides of the present window differ, so that differences do not compare."""

@@ -101,6 +101,24 @@ def fit_line(x: Array, y: Array) -> Fit:
     return Fit(slope, error, slope * float(x[-1] - x[0]), rms, n)
 
 
+def late_slope(x: Array, y: Array) -> tuple[float, float, float]:
+    """Slope that a rise settles to, with a range: (slope, low, high), per unit of x.
+
+    x, y: (points,), four at least. The slope of the later half (three points at least): what comes
+    before still holds other parts, and with many modes close to the largest factor the slope
+    approaches its logarithm from below, as dim / (4 steps) does (Laplace's method). So the range
+    reaches up as far again as the slope rose from the first half to the second, but not less than
+    two standard errors; down to the slope of the whole, or two standard errors.
+    """
+    half = max(3, len(x) // 2 + 1)
+    early, late, whole = (
+        fit_line(x[a:b], y[a:b]) for a, b in ((0, half), (len(x) - half, len(x)), (0, len(x)))
+    )
+    doubt = 2.0 * max(late.error, whole.error)
+    high = late.slope + max(doubt, late.slope - early.slope)
+    return late.slope, min(late.slope - doubt, whole.slope), high
+
+
 def fit_lines(y: Array) -> tuple[Array, Array]:
     """Slopes per row index and residual rms of many series at once: y (points, series)."""
     n = y.shape[0]

@@ -12,6 +12,10 @@ from probes.tiling import Box, Tiling
 
 Array = NDArray[np.float64]
 
+# Largest rise of a tile's bulk, as a share of that of its ripple, for which the ripple counts as
+# growing by itself.
+_BULK_RISE = 0.25
+
 
 def face_shares(energy: Array, tiling: Tiling) -> dict[str, float]:
     """Share of the energy in the tiles along each boundary face ("axis 0 low"), from 1 % on.
@@ -34,22 +38,27 @@ def face_shares(energy: Array, tiling: Tiling) -> dict[str, float]:
 
 
 def straightest_tile(
-    levels: Array, floors: Array, rise: float, straight: float, over: float
+    levels: Array, bulk: Array, floor: Array, rise: float, straight: float, over: float
 ) -> tuple[int, int, float, float, float] | None:
     """The tile whose level rose most on a straight line: (tile, span, slope, rise, rms) or None.
 
-    levels, floors: (snapshots, tiles), natural logarithms, oldest first, -inf for zero. A window
-    counts if the line rises by at least `rise`, its residual rms is at most `straight` times that
-    and all but its first points stand `over` above the floor. Window lengths grow geometrically.
+    levels, bulk: (snapshots, tiles), natural logarithms of ripple and of everything, oldest first,
+    -inf for zero. floor: (tiles,), of the ripple now. A window counts if the line rises by at least
+    `rise`, its residual rms is at most `straight` times that, and its later half stands `over`
+    above the floor. What arrives in a tile or grows there while resolved raises the bulk too: a
+    window counts only if the bulk rose by less than a quarter of the ripple. Window lengths grow
+    geometrically.
     """
     best = None
     n = 6
     while n <= levels.shape[0]:
-        window, floor = levels[-n:], floors[-n:]
+        window = levels[-n:]
         seen = np.isfinite(window).all(axis=0)
-        seen &= (window[n // 2 :] > floor[n // 2 :] + over).all(axis=0)
+        seen &= (window[n // 2 :] > floor + over).all(axis=0)
         with np.errstate(invalid="ignore"):
-            seen &= window[-1] - window[0] > 0.8 * rise
+            risen = window[-1] - window[0]
+            seen &= risen > 0.8 * rise
+            seen &= bulk[-1] - bulk[-n] < _BULK_RISE * risen
         at = np.flatnonzero(seen)
         if at.size:
             slope, rms = fit_lines(window[:, at])

@@ -88,7 +88,7 @@ class Memory:
     last: Scaled | None = None
     differences: deque[Scaled] = field(default_factory=deque)
     tile_levels: deque[Array] = field(default_factory=deque)
-    tile_floors: deque[Array] = field(default_factory=deque)
+    tile_bulk: deque[Array] = field(default_factory=deque)
     tracks: dict[str, deque[list[Tracked]]] = field(default_factory=dict)
 
     @property
@@ -161,7 +161,7 @@ class _StoredMemory(msgspec.Struct, frozen=True):
     last: _StoredColumns | None
     differences: tuple[_StoredColumns, ...]
     levels: Packed
-    floors: Packed
+    bulk: Packed
     tracks: dict[str, tuple[tuple[_StoredTrack, ...], ...]]
 
 
@@ -203,7 +203,7 @@ def store(memory: Memory) -> bytes:
             _columns(memory.last, single=False) if memory.last is not None else None,
             tuple(_columns(d, single=True) for d in memory.differences),
             _history(memory.tile_levels, memory.tiles),
-            _history(memory.tile_floors, memory.tiles),
+            _history(memory.tile_bulk, memory.tiles),
             {
                 view: tuple(tuple(_stored_track(t) for t in now) for now in track)
                 for view, track in memory.tracks.items()
@@ -238,7 +238,7 @@ def restore(data: bytes, sketch: SketchSpec) -> Memory:
         _restored(stored.last) if stored.last is not None else None,
         deque(_restored(d) for d in stored.differences),
         deque(_rows(stored.levels)),
-        deque(_rows(stored.floors)),
+        deque(_rows(stored.bulk)),
         {
             view: deque([_track(t) for t in now] for now in track)
             for view, track in stored.tracks.items()

@@ -35,8 +35,9 @@ class Reading:
     """What one snapshot tells of one channel.
 
     energy: (tiles,) grid-scale energy of what grows: of the difference, or of the Ritz vector once
-    there is one. tile_levels, tile_floors: (tiles,) ln, -inf for zero. before: tile_levels of the
-    snapshot before. noise: norm of what rounding alone gives the ripple of a difference.
+    there is one. tile_levels, tile_bulk, tile_floors: (tiles,) ln of ripple and bulk of the
+    difference and of the ripple's floor, -inf for zero. before: tile_levels of the snapshot before.
+    noise: norm of what rounding alone gives the ripple of a difference.
     """
 
     memory: Memory
@@ -45,6 +46,7 @@ class Reading:
     noise: float
     tile_floors: Array
     tile_levels: Array
+    tile_bulk: Array
     energy: Array
     before: Array | None = None
     modes: list[Mode] = field(default_factory=list)
@@ -103,6 +105,7 @@ def read_channel(memory: Memory, blocks: list[BlockReply]) -> tuple[Reading, Sca
         floor_rms * math.sqrt(float(count.sum())),
         _ln_each(np.where(count > 0, floor, 0.0)),
         nothing,
+        nothing,
         np.zeros(memory.tiles),
     )
     return reading, columns
@@ -117,7 +120,9 @@ def read_change(reading: Reading, change: Scaled, gridded: bool) -> None:
     count = sum(reading.positions[:, groups[f"r{HIGH}.{a}"]] for a in memory.axes)
     level = np.sqrt(np.divide(energy, count, out=np.zeros_like(energy), where=count > 0))
     reading.energy = energy
-    reading.tile_levels = _ln_each(level) + math.log(largest) + change.exponent * math.log(2.0)
+    scale = change.exponent * math.log(2.0)
+    reading.tile_levels = _ln_each(level) + math.log(largest) + scale
+    reading.tile_bulk = _ln_each(per_tile[:, groups["bulk"]]) + scale
     reading.before = memory.tile_levels[-1] if memory.tile_levels else None
     ripple = cells = None
     if gridded:
@@ -138,7 +143,8 @@ def tile_line(reading: Reading, change: Scaled) -> Line | None:
     memory, groups = reading.memory, reading.groups
     found = locality.straightest_tile(
         np.array(memory.tile_levels),
-        np.array(memory.tile_floors),
+        np.array(memory.tile_bulk),
+        reading.tile_floors,
         _TILE_RISE,
         _TILE_STRAIGHT,
         OVER_FLOOR,

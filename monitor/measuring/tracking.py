@@ -127,7 +127,7 @@ def _mode(
     doubt = max(pair.residual, 1e-4)
     cells, angles, amplitude = _shape(reading, pair, here)
     negative = pair.value.real < 0.0 and abs(pair.value.imag) <= 1e-9 * size
-    nearly = pair.value.real < 0.0 and abs(pair.value.imag) < 0.1 * size and stride == 1
+    nearly = pair.value.real < 0.0 and abs(pair.value.imag) < 0.2 * size and stride == 1
     return Mode(
         f=reading.memory.name,
         re=pair.value.real,

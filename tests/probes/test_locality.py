@@ -15,16 +15,27 @@ def test_the_growing_tile_is_found() -> None:
     rng = np.random.default_rng(2468)
     level = rng.normal(-20.0, 0.5, (60, 30))
     level[:, 17] = -30.0 + 0.2 * np.arange(60)
-    found = locality.straightest_tile(level, np.full_like(level, -40.0), math.log(100), 0.02, 1.8)
+    floor = np.full(level.shape[1], -40.0)
+    still = np.zeros_like(level)
+    found = locality.straightest_tile(level, still, floor, math.log(100), 0.02, 1.8)
     assert found is not None
     assert found[0] == 17
     assert math.isclose(found[2], 0.2, rel_tol=1e-6)
 
 
 def test_no_tile_below_the_floor() -> None:
-    """A rise that its floor follows does not count."""
+    """A rise up to just above the rounding floor does not count."""
     level = (-30.0 + 0.2 * np.arange(60))[:, None]
-    assert locality.straightest_tile(level, level - 1.0, math.log(100), 0.02, 1.8) is None
+    floor = level[-1] - 1.0
+    still = np.zeros_like(level)
+    assert locality.straightest_tile(level, still, floor, math.log(100), 0.02, 1.8) is None
+
+
+def test_no_tile_whose_bulk_rises_along() -> None:
+    """A wave that arrives raises the ripple and all the rest alike; that is no growth of ripple."""
+    level = (-30.0 + 0.2 * np.arange(60))[:, None]
+    floor = np.array([-40.0])
+    assert locality.straightest_tile(level, level + 9.0, floor, math.log(100), 0.02, 1.8) is None
 
 
 def test_face_shares() -> None:
