@@ -107,15 +107,16 @@ def late_slope(x: Array, y: Array) -> tuple[float, float, float]:
     x, y: (points,), four at least. The slope of the later half (three points at least): what comes
     before still holds other parts, and with many modes close to the largest factor the slope
     approaches its logarithm from below, as dim / (4 steps) does (Laplace's method). So the range
-    reaches up as far again as the slope rose from the first half to the second, but not less than
-    two standard errors; down to the slope of the whole, or two standard errors.
+    reaches up three times as far as the slope rose from the first half to the second, enough for a
+    growth that had begun as long before as the rise lasts, but not less than two standard errors;
+    down to the slope of the whole, or two standard errors.
     """
     half = max(3, len(x) // 2 + 1)
     early, late, whole = (
         fit_line(x[a:b], y[a:b]) for a, b in ((0, half), (len(x) - half, len(x)), (0, len(x)))
     )
     doubt = 2.0 * max(late.error, whole.error)
-    high = late.slope + max(doubt, late.slope - early.slope)
+    high = late.slope + max(doubt, 3.0 * (late.slope - early.slope))
     return late.slope, min(late.slope - doubt, whole.slope), high
 
 

@@ -241,3 +241,36 @@ def test_a_value_that_comes_up_again_and_again_alarms() -> None:
     assert one_mode(**again).condition == "runaway"
     for less in ({"steady": 4}, {"odd": False}, {"re": -1.1}, {"residual": 0.2}, {"share": 1e-4}):
         assert one_mode(**{**again, **less}).condition == "quiet"
+
+
+def along(times: float) -> list[Verdict]:
+    """A resolved growth of 0.1 per snapshot in the bulk, ripple that grows so many times faster."""
+    start = [Evidence(channels=(channel(-30.0 + 0.01 * (-1) ** i, bulk=-9.0),)) for i in range(20)]
+    rising = [
+        Evidence(channels=(channel(-30.0 + 0.1 * times * i, bulk=-9.0 + 0.1 * i),))
+        for i in range(1, 60)
+    ]
+    return fold([msgspec.structs.replace(e, stride=10) for e in start + rising])
+
+
+@pytest.mark.parametrize("times", [2.0, 3.0])
+def test_products_of_a_resolved_growth_are_no_alarm(times: float) -> None:
+    """Quadratic and cubic terms of a growing wave grow two and three times as fast as the wave, at
+    a half and a third of its length, as sin(x)**2 and sin(x)**3 show; that is no instability."""
+    assert not any(v.alarmed for v in along(times))
+    assert along(times)[-1].kind == "resolved"
+
+
+def test_growth_far_faster_than_the_resolved_one_alarms() -> None:
+    """What outruns a resolved growth five times is no product of it."""
+    assert any(v.alarmed for v in along(5.0))
+
+
+def test_an_alternating_mode_beside_a_resolved_growth_alarms() -> None:
+    """No product of a resolved growth flips its sign from one snapshot to the next."""
+    bulk = [channel(-20.0, bulk=-9.0 + 0.1 * i) for i in range(12)]
+    before = [Evidence(channels=(c,), stride=10) for c in bulk[:-1]]
+    last = Evidence(channels=(bulk[-1],), stride=10, modes=(mode(factor=1.02),))
+    assert not fold([*before, last])[-1].alarmed
+    odd = msgspec.structs.replace(last, modes=(mode(re=-1.22, odd=True, factor=1.02),))
+    assert fold([*before, odd])[-1].alarmed

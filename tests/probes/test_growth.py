@@ -92,3 +92,24 @@ def test_line_needs_points() -> None:
     """Two points leave no residuals."""
     with pytest.raises(ValueError, match="three points"):
         growth.fit_line(np.array([1.0, 2.0]), np.array([1.0, 2.0]))
+
+
+@given(st.integers(6, 60), st.floats(0.01, 2.0), st.sampled_from([1, 2, 3]))
+def test_the_late_slope_of_many_competing_modes(points: int, rate: float, dim: int) -> None:
+    """A cloud of modes around the fastest grows as G**k / k**(dim / 4) (Laplace's method): the true
+    rate lies in the range, and the late slope is nearer to it than the slope of the whole."""
+    k = np.arange(4.0, 4.0 + points)
+    y = rate * k - dim / 4.0 * np.log(k)
+    slope, low, high = growth.late_slope(k, y)
+    assert low <= slope <= rate <= high
+    assert rate - slope < rate - growth.fit_line(k, y).slope
+
+
+def test_the_late_slope_of_a_noisy_line() -> None:
+    """With white noise on a line the true slope lies in the range in nine of ten cases at least."""
+    rng = np.random.default_rng(71023)
+    x, inside = np.arange(15.0), 0
+    for _ in range(300):
+        _, low, high = growth.late_slope(x, 0.4 * x + 0.1 * rng.standard_normal(15))
+        inside += low <= 0.4 <= high
+    assert inside >= 270
