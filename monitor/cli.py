@@ -95,7 +95,7 @@ def _dispatch(words: list[str]) -> int:
 
 
 def _top_parser() -> ArgumentParser:
-    listing = "\n".join(f"  {name:8}{text}" for name, text in COMMANDS.items())
+    listing = "\n".join(f"  {name:10}{text}" for name, text in COMMANDS.items())
     parser = ArgumentParser(
         prog="stepwarden",
         allow_abbrev=False,

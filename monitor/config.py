@@ -129,11 +129,12 @@ class Settings(Section, frozen=True, kw_only=True):
     notify: NotifySection = NotifySection()
 
 
-def load(path: Path) -> Settings:
+def load(path: Path, overrides: Mapping[str, Any] | None = None) -> Settings:
     """The settings in the file at `path`.
 
     Paths in them stay as written: relative ones start from the file's folder (see `watch_spec` and
-    `log_path`). Raises SettingsError that tells every problem at once.
+    `log_path`). overrides: tables as in the file, which win over it. Raises SettingsError that
+    tells every problem at once.
     """
     try:
         with path.open("rb") as file:
@@ -152,7 +153,7 @@ def load(path: Path) -> Settings:
     except (tomllib.TOMLDecodeError, RecursionError) as error:
         what = str(error) if isinstance(error, tomllib.TOMLDecodeError) else "too deeply nested"
         raise SettingsError(f"is not valid TOML: {what}", str(path)) from error
-    return _settings(tables, str(path))
+    return _settings(_merged(tables, overrides or {}), str(path))
 
 
 def from_options(

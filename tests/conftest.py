@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import os
+import signal
 from pathlib import Path
 
 import pytest
@@ -29,6 +30,11 @@ def unexpected(skipped: list[tuple[str, str]]) -> list[tuple[str, str]]:
         for test, reason in skipped
         if not any(test == k or (k.endswith("*") and test.startswith(k[:-1])) for k in listed)
     ]
+
+
+def pytest_configure(config: pytest.Config) -> None:
+    """Under nohup, hang-up is ignored by whatever is started, and tests of it would see that."""
+    signal.signal(signal.SIGHUP, signal.SIG_DFL)
 
 
 def pytest_runtest_logreport(report: pytest.TestReport) -> None:

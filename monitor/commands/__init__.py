@@ -15,6 +15,7 @@ COMMANDS = {
     "guard": "follow a run: read, log, alarm, pin, stop (no screen)",
     "desk": "follow a run or its growth log on a screen",
     "review": "say what happened, from a growth log",
+    "rehearse": "replay a history against other alarm settings",
     "pins": "list the checkpoints that guard keeps safe",
     "verify": "say whether a checkpoint is fit to restart from",
 }

@@ -7,31 +7,10 @@ from __future__ import annotations
 
 from pathlib import Path
 
-import pytest
-
-from monitor.cli import main
 from monitor.growthlog.records import Intent, Opened, Segment, Skipped, Snapshot
 from monitor.lastclean import clean_pins
-from tests.processes import solver
+from tests.monitor.here import PATTERN
 from tests.processes.scene import Scene
-
-PATTERN = ("--snapshots", "out/T_{step}.npy")
-
-
-class Here(Scene):
-    """A scene whose solver and guard run in this process."""
-
-    def solved(self, *options: object) -> None:
-        solver.main(["out", *map(str, options)])
-
-    def guarded(self, *options: object) -> int:
-        return main(["guard", *map(str, options)])
-
-
-@pytest.fixture
-def scene(tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> Here:
-    monkeypatch.chdir(tmp_path)
-    return Here(tmp_path)
 
 
 def test_catching_up_with_nothing(scene: Scene) -> None:
