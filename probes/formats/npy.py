@@ -8,6 +8,7 @@ import struct
 from collections.abc import Iterator
 from io import BufferedReader
 from pathlib import Path
+from tokenize import TokenError
 from types import TracebackType
 from typing import IO, Self
 
@@ -22,6 +23,8 @@ from probes.spec import SnapshotSpec
 
 # A header is a short dictionary; a longer one is damage, and parsing it would be slow.
 _LONGEST_HEADER = 10_000
+# What NumPy raises for headers that are no dictionary of the right kind, besides ValueError.
+_DAMAGE = (EOFError, SyntaxError, TypeError, OverflowError, UnicodeDecodeError, TokenError)
 
 
 def read_header(file: IO[bytes], name: str, where: str) -> FieldInfo:
@@ -49,7 +52,7 @@ def read_header(file: IO[bytes], name: str, where: str) -> FieldInfo:
         if "EOF" in str(error):
             raise NotYet("the header ends early", where) from error
         raise ReadError(f"damaged header ({error})", where) from error
-    except (EOFError, SyntaxError, TypeError, OverflowError, UnicodeDecodeError) as error:
+    except _DAMAGE as error:
         raise ReadError(f"damaged header ({error})", where) from error
     if dtype.hasobject:
         raise Refused("holds Python objects, which are never loaded", where)
