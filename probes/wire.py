@@ -45,10 +45,7 @@ class Packed(msgspec.Struct, frozen=True, array_like=True):
 
 
 class FileId(msgspec.Struct, frozen=True, kw_only=True):
-    """One file of an arrival. path is absolute; part and field are "" without place-holder.
-
-    replaced: the directory entry was seen to change to another inode (rename into place).
-    """
+    """One file of an arrival. path is absolute; part and field are "" without place-holder."""
 
     path: str
     size: int

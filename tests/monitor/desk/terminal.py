@@ -21,7 +21,7 @@ PATIENCE = 20.0
 
 
 class Terminal:
-    """Runs `stepwarden desk` with `words` on a pseudo-terminal of the given size."""
+    """Runs `stepwarden desk`, or another command, with `words` on a pseudo-terminal."""
 
     def __init__(
         self,
@@ -29,7 +29,7 @@ class Terminal:
         *,
         size: tuple[int, int] = (80, 24),
         environment: Mapping[str, str] | None = None,
-        command: Sequence[str] = ("-m", "monitor", "desk"),
+        command: Sequence[str] = (sys.executable, "-m", "monitor", "desk"),
     ) -> None:
         self.screen = pyte.Screen(*size)
         self._stream = pyte.ByteStream(self.screen)
@@ -42,7 +42,7 @@ class Terminal:
         base.update({"TERM": "xterm-256color", "LANG": "C.UTF-8", "PYTHONPATH": ""})
         base.update(environment or {})
         self.process = subprocess.Popen(
-            [sys.executable, *command, *words],
+            [*command, *words],
             stdin=slave,
             stdout=slave,
             stderr=slave,

@@ -5,6 +5,7 @@ from __future__ import annotations
 import os
 import signal
 import statistics
+import sys
 from collections.abc import Iterator
 from pathlib import Path
 
@@ -76,7 +77,7 @@ def test_a_hang_up_that_is_ignored_ends_the_desk_too(folder: Path) -> None:
         "terminal.LEAVE_ON = (signal.SIGTERM,); signal.signal(signal.SIGHUP, signal.SIG_IGN); "
         "sys.exit(run(sys.argv[1]))"
     )
-    with Terminal([str(folder)], command=("-c", code)) as desk:
+    with Terminal([str(folder)], command=(sys.executable, "-c", code)) as desk:
         desk.wait_for("q leave")
         os.close(desk.master)
         os.close(desk.slave)
@@ -175,7 +176,7 @@ def test_a_crash_is_one_message_and_a_clean_terminal(folder: Path) -> None:
         "GrowthPart.facts = lambda *a: 1 / 0; "
         "sys.exit(run(sys.argv[1]))"
     )
-    with Terminal([str(folder)], command=("-c", code)) as desk:
+    with Terminal([str(folder)], command=(sys.executable, "-c", code)) as desk:
         assert desk.end() == 1
         assert desk.clean()
         after = desk.sent.rpartition(b"\x1b[?1049l")[2].decode()
@@ -203,7 +204,7 @@ def test_an_update_is_small(tmp_path: Path) -> None:
     while nothing changes."""
     log, made = live(tmp_path, 80)
     code = QUICK.format("pass", "")
-    with Terminal([str(tmp_path)], size=(120, 40), command=("-c", code)) as desk:
+    with Terminal([str(tmp_path)], size=(120, 40), command=(sys.executable, "-c", code)) as desk:
         desk.wait_for("q leave")
         desk.settle()
         first_paint = len(desk.sent)
@@ -233,7 +234,7 @@ def test_both_ways_of_sending_paint_the_same_screen(tmp_path: Path) -> None:
         folder.mkdir()
         log, _ = live(folder, 95)
         code = QUICK.format(f"import time; time.time = lambda: {now}", f"stock_driver={stock}")
-        with Terminal([str(folder)], size=(120, 40), command=("-c", code)) as desk:
+        with Terminal([str(folder)], size=(120, 40), command=(sys.executable, "-c", code)) as desk:
             desk.wait_for("q leave")
             for record in made.records[95:109]:
                 with log.open("ab") as file:
