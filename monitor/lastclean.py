@@ -144,15 +144,18 @@ def clean_pins(
 def clean_files(snaps: Sequence[Snapshot], turn: Snapshot | None) -> list[CleanSnapshot]:
     """Clean snapshots whose name was not used again later in the segment, in step order.
 
-    A name that several snapshots share was overwritten (or is a growing file whose records the
-    log cannot tell apart by name); only its last use still stands.
+    A name that several snapshots share was overwritten, and only its last use still stands; but for
+    a growing file, whose records stay.
     """
     before = _before(snaps, turn)
-    left = Counter(s.path for s in snaps)
+    left = Counter((s.path, s.record) for s in snaps)
     out = []
     for snapshot in snaps:
-        left[snapshot.path] -= 1
-        reason = "" if left[snapshot.path] else clean_reason(snapshot, turn, before)
+        left[snapshot.path, snapshot.record] -= 1
+        gone = left[snapshot.path, snapshot.record] > 0
+        reason = "" if gone else clean_reason(snapshot, turn, before)
+        if reason and snapshot.record is not None:
+            reason = f"record {snapshot.record}, {reason}"
         if reason:
             out.append(CleanSnapshot(place(snapshot), snapshot.path, False, "", reason))
     return out

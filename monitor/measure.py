@@ -14,7 +14,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from monitor.config import Settings
-from monitor.growthlog.records import Evidence
+from monitor.growthlog.records import Evidence, Mode
 from monitor.measuring import placing
 from monitor.measuring.memory import Memory, Scaled, memories, restore, store
 from monitor.measuring.placing import CloseUpCrops, Crops, TileGrid
@@ -24,8 +24,11 @@ from probes.wire import BlockReply, Crop, Packed, Sketched
 
 __all__ = ["CloseUpCrops", "Measured", "Measurer", "TileGrid", "resketch_distance"]
 
-# Modes in one record at most, those that have persisted longest first.
+# Modes in one record at most, and snapshots in a row from which on one value is no accident.
 _MODES = 4
+_STEADY = 3
+# Modes of two views are one if their factors per step differ by less than this.
+_SAME_FACTOR = 1e-3
 # Strides that differ by more than this make differences weigh each mode differently.
 _UNEVEN = 1.02
 
@@ -103,11 +106,7 @@ class Measurer:
             dt=dt,
             uneven=uneven,
             fresh=self._seen,
-            modes=tuple(
-                sorted((m for r in readings for m in r.modes), key=lambda m: (-m.held, -m.steady))[
-                    :_MODES
-                ]
-            ),
+            modes=_worth_logging([m for r in readings for m in r.modes]),
             bad_at=(bad.field, bad.part, bad.bad_at) if bad is not None else None,
         )
         grid = closeup = None
@@ -201,6 +200,29 @@ class Measurer:
 
 def _single(values: NDArray[np.float64]) -> NDArray[np.float64]:
     return values.astype(np.float32).astype(np.float64)
+
+
+def _worth_logging(modes: list[Mode]) -> tuple[Mode, ...]:
+    """Modes that have persisted, or whose value came up again and again, each in one view, and
+    larger ones beside them, which they may be products of; those that have persisted longest
+    first."""
+    lasting = [m for m in modes if m.held or m.steady >= _STEADY]
+    lasting = [m for m in lasting if m.odd or m.view == "ripple" or not _seen_as_ripple(m, lasting)]
+    beside = [
+        o
+        for o in modes
+        if o not in lasting
+        and any(o.f == m.f and o.view == m.view and o.share > m.share for m in lasting)
+    ]
+    lasting.sort(key=lambda m: (-m.held, -m.steady))
+    return tuple([*lasting, *beside][:_MODES])
+
+
+def _seen_as_ripple(bulk: Mode, modes: list[Mode]) -> bool:
+    return any(
+        m.f == bulk.f and m.view == "ripple" and abs(m.factor / bulk.factor - 1.0) < _SAME_FACTOR
+        for m in modes
+    )
 
 
 def _by_channel(blocks: tuple[BlockReply, ...]) -> dict[str, list[BlockReply]]:

@@ -33,8 +33,10 @@ def unexpected(skipped: list[tuple[str, str]]) -> list[tuple[str, str]]:
 
 
 def pytest_configure(config: pytest.Config) -> None:
-    """Under nohup, hang-up is ignored by whatever is started, and tests of it would see that."""
+    """Under nohup or in the background of a script, hang-up or interrupt are ignored by whatever is
+    started, and tests of them would see that."""
     signal.signal(signal.SIGHUP, signal.SIG_DFL)
+    signal.signal(signal.SIGINT, signal.default_int_handler)
 
 
 def pytest_runtest_logreport(report: pytest.TestReport) -> None:

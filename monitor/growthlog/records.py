@@ -291,6 +291,7 @@ class Snapshot(
         "seg": "sg",
         "time": "t",
         "mtime": "mt",
+        "record": "rn",
         "evidence": "ev",
         "verdict": "vd",
     },
@@ -298,6 +299,7 @@ class Snapshot(
     """One snapshot, judged. key identifies the content; path is relative to the run's folder.
 
     step None: unknown, `index` counts snapshots of the segment. mtime: of the file, seconds.
+    record: index on the record axis of a growing file, None for a file without one.
     """
 
     key: str
@@ -307,6 +309,7 @@ class Snapshot(
     step: int | None = None
     time: float | None = None
     mtime: float = 0.0
+    record: int | None = None
     evidence: Evidence
     verdict: Verdict
 

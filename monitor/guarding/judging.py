@@ -164,6 +164,7 @@ class Judge:
             step=arrival.step,
             time=arrival.time,
             mtime=arrival.mtime_ns / 1e9,
+            record=arrival.record if arrival.growing else None,
             evidence=evidence,
             verdict=verdict,
         )

@@ -2,15 +2,13 @@
 
 from __future__ import annotations
 
-from functools import cache
 from pathlib import Path
 
 import numpy as np
 import pytest
 
-from tests.demo_runs.running import FAULTS, SOLVERS, measured
+from tests.demo_runs.running import FAULTS, SOLVERS, UNUSED, measured, twins
 
-UNUSED = Path("nothing-is-written-here")
 # Round-off, 1e-16, to 1e-4 of the field.
 DECADES = np.log(1e12)
 # The channel's fault grows alike along its whole length: its modes part slowly.
@@ -21,32 +19,6 @@ DEEPEST = {
     "channel": ((3, 14), (53, 64)),
     "pipe": ((250, 276),),
 }
-
-
-@cache
-def twins(name: str) -> tuple[np.ndarray, np.ndarray, np.ndarray]:
-    """Two runs at 1.02 whose starts differ by a rounding: (steps, rms difference over the field's
-    range at every snapshot below 1e-4, the last difference)."""
-    solver = SOLVERS[name]
-    truth = solver.growth(1.02)
-    cast = solver.build(1.02, None, UNUSED)
-    rng = np.random.default_rng(33_941)
-    one = cast.state
-    other = {k: v * (1.0 + 2e-16 * rng.integers(-1, 2, v.shape)) for k, v in one.items()}
-    scale = np.ptp(one[truth.field])
-    steps, levels = [], []
-    off = np.zeros_like(one[truth.field])
-    for step in range(1, 2_000):
-        one, other = cast.step(one), cast.step(other)
-        if step % solver.EVERY == 0:
-            latest = one[truth.field] - other[truth.field]
-            level = np.sqrt(np.mean(latest**2)) / scale
-            if level > 1e-4:
-                break
-            off = latest
-            steps.append(step)
-            levels.append(level)
-    return np.array(steps), np.array(levels), off
 
 
 @pytest.mark.parametrize("name", SOLVERS)

@@ -150,3 +150,16 @@ def test_a_share_without_a_value_proves_nothing() -> None:
     alarm = snap(5, "runaway", evidence_=evidence(1e-3), alarmed=True, onset=(60, 100))
     assert clean_reason(unknown, alarm, [unknown]) == ""
     assert Estimate(reason="below the floor").value is None
+
+
+def test_records_of_a_growing_file_stay() -> None:
+    """All snapshots share a name; as records they are told apart and the clean ones offered, as
+    overwritten files only the last one would be."""
+    snaps, turn = run_of(alarmed_run())
+    one = [replace(s, path="channel.h5") for s in snaps]
+    assert clean_files(one, turn) == []
+    records = [replace(s, record=i) for i, s in enumerate(one)]
+    found = clean_files(records, turn)
+    assert found[-1].path == "channel.h5"
+    assert found[-1].reason.startswith(f"record {len(found) - 1}, ")
+    assert found[-1].step < (turn.step if turn is not None and turn.step is not None else 0)

@@ -229,12 +229,13 @@ def test_modules_in_the_runs_folder_are_never_imported(scene: Scene) -> None:
 
 
 def test_a_full_disk_does_not_stop_guarding(scene: Scene) -> None:
-    """Nothing can be written any more, neither log nor window (here: a limit on the size of files);
-    guard says so once, and still has the run stopped."""
+    """Nothing can be written any more, neither log nor window (here: a limit on the size of files,
+    which also holds for what guard says, hence quietly); guard says so once, and still has the run
+    stopped."""
     import resource
 
     solver = scene.solve("--factor", 1.1, "--last", 100000, "--pace", 0.05, "--stop-file", "STOP")
-    guard = scene.guard(*PATTERN, "--pid", solver.pid, "--stop-file", "STOP")
+    guard = scene.guard(*PATTERN, "--pid", solver.pid, "--stop-file", "STOP", "--quiet")
     resource.prlimit(guard.pid, resource.RLIMIT_FSIZE, (3000, resource.RLIM_INFINITY))
     assert guard.wait(60.0) == 10
     assert solver.wait(10.0) == 0
