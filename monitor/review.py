@@ -7,6 +7,7 @@ from collections.abc import Iterable, Sequence
 from dataclasses import dataclass, replace
 from typing import TYPE_CHECKING, TypeVar
 
+from monitor.foresight import foreseeable_growth
 from monitor.growthlog.records import (
     Box,
     Closed,
@@ -171,6 +172,7 @@ class Review:
         strings "nan", "inf" and "-inf", as in the log."""
         growth, clean = self.growth, self.clean
         interval = [growth.low, growth.high]
+        foresight = foreseeable_growth(self.told.evidence) if self.told else None
         return {
             "schema": SCHEMA,
             "run": self.run,
@@ -200,6 +202,7 @@ class Review:
             }
             if clean
             else None,
+            "foreseeable_growth": list(foresight) if foresight else None,
             "evidence": self.told.verdict.why if self.told else "",
             "snapshots": self.snapshots,
             "skipped": len(self.skipped),

@@ -6,6 +6,7 @@ import textwrap
 from collections.abc import Iterator
 from datetime import UTC, datetime
 
+from monitor.foresight import foresight_text
 from monitor.lastclean import CleanSnapshot, place
 from monitor.review import Review
 from monitor.wording import clean, estimate_text, number
@@ -49,6 +50,8 @@ def _rows(review: Review) -> Iterator[tuple[str, str]]:
     if review.told is not None and (review.turn is not None or review.kind != "none"):
         yield from _growth_rows(review)
     yield from _clean_rows(review)
+    if review.told is not None and (foresight := foresight_text(review.told.evidence)):
+        yield "Warning", foresight
     for deed in review.deeds:
         tries = f" ({deed.attempts} attempts)" if deed.attempts > 1 else ""
         detail = f": {deed.detail}" if deed.detail else ""

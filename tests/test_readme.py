@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import math
 import re
 import shlex
 from argparse import ArgumentParser
@@ -91,3 +92,23 @@ def test_links_lead_somewhere(link: str) -> None:
 def test_the_integration_script_runs_the_readmes_test_command() -> None:
     """What is promised is what is checked."""
     assert SECOND_COMMAND in (ROOT / ".ci" / "run").read_text(encoding="utf-8")
+
+
+def factors(excess: float) -> tuple[float, float, float]:
+    """Growth per step so far above the limit, of the fastest wave (von Neumann's analysis; Strikwerda
+    2004, chapters 2, 6 and 8, chapter numbers from memory): central second-order waves, leapfrog
+    advection, forward Euler for heat."""
+    nu = 1.0 + excess
+    root = nu + math.sqrt(nu * nu - 1.0)
+    return root**2, root, abs(1.0 - 2.0 * nu)
+
+
+def test_the_table_of_steps_to_ruin() -> None:
+    """Every entry of the table follows from the factors: 16 decades, and a twelfth of that."""
+    rows = re.findall(r"^\| ([\d.]+) % \| (.+) \|$", README, re.MULTILINE)
+    assert len(rows) == 5
+    for excess, cells in rows:
+        for factor, cell in zip(factors(float(excess) / 100.0), cells.split(" | "), strict=True):
+            steps = math.log(1e16) / math.log(factor)
+            between = f"{int(steps / 12):,}" if steps >= 12 else "–"
+            assert cell == f"{round(steps):,} / {between}"

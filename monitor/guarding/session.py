@@ -12,6 +12,7 @@ from monitor.actions.runprocess import RunProcess
 from monitor.childkeeper import ChildKeeper
 from monitor.config import Settings
 from monitor.exits import Exit
+from monitor.foresight import foresight_text
 from monitor.growthlog.lock import Lock, LockLost
 from monitor.growthlog.records import Closed, Pulse, PulseChange, Skipped
 from monitor.guarding.cadence import Spacing
@@ -349,6 +350,8 @@ class Session:
             self._note_once(note)
         self._remember(judged)
         self._teller.snapshot(judged.record)
+        if judged.changed and (foresight := foresight_text(judged.record.evidence)):
+            self._teller.news(foresight)
         self._hands.judged(
             judged,
             arrival,
