@@ -95,9 +95,9 @@ def test_the_integration_script_runs_the_readmes_test_command() -> None:
 
 
 def factors(excess: float) -> tuple[float, float, float]:
-    """Growth per step so far above the limit, of the fastest wave (von Neumann's analysis; Strikwerda
-    2004, chapters 2, 6 and 8, chapter numbers from memory): central second-order waves, leapfrog
-    advection, forward Euler for heat."""
+    """Growth per step so far above the limit, of the fastest wave (von Neumann's analysis;
+    Strikwerda 2004, chapters 2, 6 and 8, numbers from memory): central second-order waves,
+    leapfrog advection, forward Euler for heat."""
     nu = 1.0 + excess
     root = nu + math.sqrt(nu * nu - 1.0)
     return root**2, root, abs(1.0 - 2.0 * nu)
