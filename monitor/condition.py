@@ -50,10 +50,17 @@ _STEADY_VALUE = 1.25
 # fast. Growth up to so many times as fast as the bulk, which rises by at least this (ln) on a
 # straight line and is no ripple itself, is explained by it.
 _PARENT_POINTS = 7
+_PARENT_FEWEST = 4
 _PARENT_RISE = math.log(1.8)
 _PARENT_STRAIGHT = 0.1
 _PARENT_FASTER = 3.4
 _PARENT_OVER_RIPPLE = 1.0
+# A pair that has grown by so much (ln) at one and the same factor may be that many cells longer,
+# and longer still with this share of the growth along one face: what lives at a boundary dies away
+# from it and so looks longer than it is.
+_LONG_GROWN = 3.0 * math.log(10.0)
+_LONGER_CELLS = 1.5
+_AT_A_FACE = 0.9
 # Longest wavelength, in cells, up to which growth is suspicious though not damning.
 _DOUBTFUL_CELLS = 6.5
 _DOUBLE_LARGEST = 709.78
@@ -337,15 +344,15 @@ def _explained(fit: Fit, s: Series, evidence: Evidence, spec: FieldSpec | None) 
 
 
 def _goes_along(slope: float, s: Series, points: int) -> bool:
-    """Whether the bulk of the last `points` snapshots (seven at least) shows a resolved growth that
-    ripple growing with this slope may be a product of."""
+    """Whether the bulk of the last `points` snapshots (seven at least, where there are as many)
+    shows a resolved growth that ripple growing with this slope may be a product of."""
     points = max(points, _PARENT_POINTS)
-    x, bulk = s.x[-points:], s.bulk[-points:]
+    known = [(a, b) for a, b in zip(s.x[-points:], s.bulk[-points:], strict=True) if b is not None]
     ripple = s.ripple[-1]
-    if len(x) < _PARENT_POINTS or any(v is None for v in bulk) or ripple is None:
+    if len(known) < _PARENT_FEWEST or ripple is None:
         return False
-    y = np.array(bulk, dtype=float)
-    parent = fit_line(np.array(x), y)
+    x, y = np.array(known).T
+    parent = fit_line(x, y)
     grows = parent.rise >= _PARENT_RISE and parent.rms <= _PARENT_STRAIGHT * parent.rise
     over = y[-1] - ripple > _PARENT_OVER_RIPPLE
     return bool(grows and over and slope <= _PARENT_FASTER * parent.slope)
@@ -449,7 +456,13 @@ def _short(m: Mode, evidence: Evidence, alarm: AlarmSection) -> bool:
     In the bulk the little ripple of a pair may be another's, so its wavelength proves nothing; the
     products of a resolved growth (its harmonics) are shorter and grow faster than it does.
     """
-    if m.view != "ripple" or m.cells is None or m.cells > alarm.mode_cells or m.share < SHARE:
+    if m.view != "ripple" or m.cells is None or m.share < SHARE:
+        return False
+    longest = alarm.mode_cells
+    if m.grown >= _LONG_GROWN:
+        at_a_face = max(evidence.edges.values(), default=0.0) >= _AT_A_FACE
+        longest = _DOUBTFUL_CELLS if at_a_face else longest + _LONGER_CELLS
+    if m.cells > longest:
         return False
     return not any(
         o.f == m.f
@@ -464,8 +477,10 @@ def _short(m: Mode, evidence: Evidence, alarm: AlarmSection) -> bool:
 def _alternates(m: Mode, off: float) -> bool:
     """Whether a held pair flips its sign as no resolved motion does, and grows nearly as foretold.
 
-    That is evidence at any wavelength, also in the bulk.
+    That is evidence at any wavelength; in the bulk, where everything swings, by a decade of growth.
     """
+    if m.view == "bulk" and max(m.grown, 2.0 * m.foretold) < math.log(10.0):
+        return False
     return (
         m.odd and m.share >= _ODD_SHARE and m.foretold > 0.2 and off <= max(0.15, 0.5 * m.foretold)
     )
