@@ -61,6 +61,11 @@ _PARENT_OVER_RIPPLE = 1.0
 _LONG_GROWN = 3.0 * math.log(10.0)
 _LONGER_CELLS = 1.5
 _AT_A_FACE = 0.9
+# Doubt of a pair's rate: a share below, and above this (dim / 4 in three dimensions) over the
+# e-foldings that it has grown, which count as so many at least.
+_PAIR_BELOW = 0.01
+_PAIR_ABOVE = 0.75
+_PAIR_GROWN = 5.0
 # Longest wavelength, in cells, up to which growth is suspicious though not damning.
 _DOUBTFUL_CELLS = 6.5
 _DOUBLE_LARGEST = 709.78
@@ -410,7 +415,7 @@ def _modes(
             math.log(m.factor), evidence, fields.get(m.f.split("[")[0])
         ):
             continue
-        factor = Estimate(m.factor, m.low, m.high, 0.9)
+        factor = _pair_factor(m, evidence)
         length = f", {m.cells:.1f} cells long" if m.cells is not None else ""
         onset = _mode_onset(m, evidence, x)
         off = abs(m.gain - m.foretold)
@@ -438,6 +443,20 @@ def _modes(
             )
             out.append(_alarm(m, why, 50.0 + m.steady, factor, onset))
     return out
+
+
+def _pair_factor(m: Mode, evidence: Evidence) -> Estimate:
+    """Factor of a pair. A small residual says that it is one of the modes, not that it is the
+    fastest: of many near each other the leader falls short by about dim / 4 in as many e-foldings
+    as it has grown (Laplace's method), and those are counted from the rounding floor."""
+    channel = next((c for c in evidence.channels if c.f == m.f), None)
+    grown = m.grown
+    if channel is not None and channel.ripple is not None and channel.floor is not None:
+        grown = max(grown, channel.ripple - channel.floor)
+    rate = math.log(m.factor)
+    low = rate * (1.0 - _PAIR_BELOW)
+    high = rate * (1.0 + _PAIR_ABOVE / max(grown, _PAIR_GROWN))
+    return Estimate(m.factor, min(m.low, math.exp(low)), max(m.high, math.exp(high)), 0.9)
 
 
 def _alarm(m: Mode, why: str, weight: float, factor: Estimate, onset: tuple[int, int]) -> Finding:

@@ -38,6 +38,8 @@ SCHEMA = 1
 # Beyond this local contamination growth is no longer free exponential growth: later records say
 # less about the factor than earlier ones.
 FREE_GROWTH = 0.1
+# Records of free growth among which the narrowest estimate of the factor is taken.
+_LAST = 5
 
 # An instability that goes from seen to ruin within this many snapshots was detected, not predicted.
 FEW_SNAPSHOTS = 3
@@ -273,18 +275,17 @@ def summarise(contents: LogContents) -> Review:
 
 
 def best_growth(snaps: Sequence[Snapshot], turn: Snapshot) -> Estimate:
-    """The narrowest estimate of the factor from the alarm on, while the growth was free.
+    """The narrowest of the last estimates of the factor from the alarm on, while growth was free.
 
     Later records see more of the growing part and know its factor better, until it is so large
     that it no longer grows freely (local contamination above `FREE_GROWTH`).
     """
-    best = _or_unknown(turn.verdict.factor)
-    for snapshot in _free(snaps, turn):
-        factor = snapshot.verdict.factor
-        same = snapshot.verdict.field == turn.verdict.field
-        if same and factor is not None and _width(factor) < _width(best):
-            best = factor
-    return best
+    known = [
+        s.verdict.factor
+        for s in (turn, *_free(snaps, turn))
+        if s.verdict.field == turn.verdict.field and s.verdict.factor is not None
+    ]
+    return min(known[-_LAST:], key=_width, default=_or_unknown(None))
 
 
 def shares(

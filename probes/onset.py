@@ -25,6 +25,9 @@ _WIDER = 1.35
 # Growth by decades per snapshot leaves no time for six points: four do if they rise further.
 _FAST = 4
 _FAST_RISE = 1.5
+# Growth by a constant factor settles to its slope from below, by little; where a front forms or a
+# field is driven, the last third of the rise is steeper than the whole by more than this.
+_QUICKENING = 1.25
 # Residual rms, in ln, that no straight line exceeds however far it rises.
 _LARGEST_RMS = 0.25
 
@@ -103,7 +106,7 @@ def straight_rise(
     """The longest window that ends now in which y rises by at least `rise` on a straight line.
 
     over: (points,) whether a value stands above its floor; the later half of a window must. The
-    residual rms may be at most `straight` times the rise.
+    residual rms may be at most `straight` times the rise, and the line may not quicken.
     """
     best: Rise | None = None
     for n in (*range(_FAST, SHORTEST), *windows(len(y))):
@@ -115,6 +118,9 @@ def straight_rise(
         fit = fit_line(x[-n:], part)
         needed = rise if n >= SHORTEST else _FAST_RISE * rise
         if fit.rise >= needed and fit.rms <= min(straight * fit.rise, _LARGEST_RMS):
+            last = max(3, n // 3)
+            if fit_line(x[-last:], y[-last:]).slope > _QUICKENING * fit.slope:
+                continue
             score = fit.slope / fit.error if fit.error > 0.0 else math.inf
             best = Rise(fit, score, 0.0, len(y) - n)
     return best
