@@ -63,3 +63,18 @@ def test_correlation_is_bounded() -> None:
     assert onset.correlation(np.array([1.0, -1.0] * 40)) == 0.0
     assert onset.correlation(np.zeros(5)) == 0.0
     assert onset.correlation(np.linspace(-1, 1, 400)) <= 0.95
+
+
+def test_a_rise_that_quickens_is_no_constant_factor() -> None:
+    """A level that turns from a steady rise to one twice as steep over its last third (a front that
+    forms) is not taken for a line, though it lies close to one; a settled one is."""
+    x = np.arange(15.0)
+    over = np.ones(15, dtype=bool)
+    settling = 0.4 * x - 0.25 * np.log1p(x)
+    quickening = 0.4 * x + 0.013 * np.maximum(0.0, x - 8.0) ** 2.2
+    assert onset.straight_rise(x, settling, over, math.log(100.0), 0.04) is not None
+    assert onset.straight_rise(x, quickening, over, math.log(100.0), 0.04) is None
+    from probes.growth import fit_line
+
+    fit = fit_line(x, quickening)
+    assert fit.rms < 0.04 * fit.rise
