@@ -13,6 +13,7 @@ import msgspec
 from monitor.settings_report import Problem, convert_keys, raise_all
 from monitor.settings_rules import broken_rules
 from probes.errors import SettingsError
+from probes.limits.spec import SchemeSpec
 from probes.spec import FieldSpec, SketchSpec, SnapshotSpec, WatchSpec
 
 # A settings file is written by a person; anything longer is some other file.
@@ -115,7 +116,10 @@ class NotifySection(Section, frozen=True, kw_only=True):
 
 
 class Settings(Section, frozen=True, kw_only=True):
-    """The whole file. stop is empty until configured: nothing is ever stopped by default."""
+    """The whole file. stop is empty until configured: nothing is ever stopped by default.
+
+    scheme: how the solver marches, for `limit`; None where the file does not say.
+    """
 
     snapshots: SnapshotSpec
     run: RunSection = RunSection()
@@ -127,14 +131,16 @@ class Settings(Section, frozen=True, kw_only=True):
     pins: PinSection = PinSection()
     stop: tuple[StopStep, ...] = ()
     notify: NotifySection = NotifySection()
+    scheme: SchemeSpec | None = None
 
 
-def load(path: Path, overrides: Mapping[str, Any] | None = None) -> Settings:
+def load(path: Path, overrides: Mapping[str, Any] | None = None, watching: bool = True) -> Settings:
     """The settings in the file at `path`.
 
     Paths in them stay as written: relative ones start from the file's folder (see `watch_spec` and
-    `log_path`). overrides: tables as in the file, which win over it. Raises SettingsError that
-    tells every problem at once.
+    `log_path`). overrides: tables as in the file, which win over it. watching: whether snapshots
+    are going to be watched, so that the file must say which. Raises SettingsError that tells every
+    problem at once.
     """
     try:
         with path.open("rb") as file:
@@ -153,6 +159,8 @@ def load(path: Path, overrides: Mapping[str, Any] | None = None) -> Settings:
     except (tomllib.TOMLDecodeError, RecursionError) as error:
         what = str(error) if isinstance(error, tomllib.TOMLDecodeError) else "too deeply nested"
         raise SettingsError(f"is not valid TOML: {what}", str(path)) from error
+    if not watching:
+        tables.setdefault("snapshots", {"pattern": "*"})
     return _settings(_merged(tables, overrides or {}), str(path))
 
 

@@ -155,12 +155,12 @@ def _listed_sections(
     value: object, kind: type[msgspec.Struct], keys: tuple[str, ...], problems: list[Problem]
 ) -> Any:
     if not isinstance(value, list | tuple):
-        remedy = f"write [[{keys[-1]}]] for each"
+        remedy = f"write [[{'.'.join(keys)}]] for each"
         problems.append(Problem(section_place(*keys), "must be a list of sections", remedy))
         return msgspec.UNSET
     # Unusable ones keep their place, so that the others keep their numbers in the report.
     return tuple(
-        _section(table, kind, keys, numbered_place(keys[-1], n), problems)
+        _section(table, kind, keys, numbered_place(".".join(keys), n), problems)
         for n, table in enumerate(value, 1)
     )
 

@@ -83,8 +83,23 @@ BOUNDS: dict[str, dict[str, Bounds]] = {
     "pins": {"provisional": _NOT_NEGATIVE, "budget_gb": _POSITIVE},
     "stop": {"wait_seconds": _POSITIVE},
     "notify": {"wait_seconds": _POSITIVE},
+    "scheme": {
+        "step": _NOT_NEGATIVE,
+        "cells": _FROM_ONE,
+        "stages": _NOT_NEGATIVE,
+        "damping": Bounds(also=-1),
+        "order": Bounds(1, 2),
+        "filter": Bounds(0, 0.5),
+    },
 }
-FREE = {"fields": ("fill", "origin", "min", "max")}
+FREE = {
+    "fields": ("fill", "origin", "min", "max"),
+    # Judged where they are put together: probes.limits.building and probes.limits.scheme.
+    "scheme": ("spacing", "tableau", "weights", "polynomial"),
+    "terms": (
+        ("velocity", "coefficient", "speed", "rate") + ("offsets", "weights", "matrices", "source")
+    ),
+}
 
 
 def broken_rules(sections: Mapping[str, Any]) -> Iterator[Problem]:
@@ -100,7 +115,7 @@ def broken_rules(sections: Mapping[str, Any]) -> Iterator[Problem]:
                     continue
                 yield from _within(rung, "stop", numbered_place("stop", n))
                 yield from _rung(rung, numbered_place("stop", n))
-        else:
+        elif section is not None:
             yield from _within(section, name, section_place(name))
     if "snapshots" in sections:
         yield from _snapshots(sections["snapshots"])

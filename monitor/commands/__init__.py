@@ -11,6 +11,7 @@ from typing import Protocol
 # name: one line of help. The order is that of a run's life.
 COMMANDS = {
     "demo": "watch a small solver go unstable, from first sign to stop",
+    "limit": "say how large a time step the scheme tolerates, and why",
     "scout": "look at a run's folder, say what was understood, propose settings",
     "guard": "follow a run: read, log, alarm, pin, stop (no screen)",
     "desk": "follow a run or its growth log on a screen",

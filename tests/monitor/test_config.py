@@ -23,6 +23,7 @@ from monitor.config import (
 )
 from monitor.settings_rules import BOUNDS, FREE, Bounds
 from probes.errors import SettingsError
+from probes.limits.spec import SchemeSpec, TermSpec
 from probes.spec import FieldSpec, RawSpec, SnapshotSpec
 
 WHOLE = """
@@ -455,7 +456,8 @@ def test_any_tables_give_settings_or_a_report(tables: dict[str, Any]) -> None:
 
 def sections() -> dict[str, type[msgspec.Struct]]:
     found = {f.name: f.type for f in msgspec.structs.fields(Settings)}
-    return found | {"fields": FieldSpec, "stop": StopStep, "raw": RawSpec}
+    own = {"fields": FieldSpec, "stop": StopStep, "raw": RawSpec}
+    return found | own | {"scheme": SchemeSpec, "terms": TermSpec}
 
 
 def is_numeric(kind: Any) -> bool:
