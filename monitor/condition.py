@@ -42,6 +42,8 @@ _ODD_SHARE = 0.02
 # A value that came up in as many snapshots in a row, with so small a residual, share and growth per
 # snapshot, is no accident of the noise.
 _STEADY = 5
+# A persisting pair has to show its value in as many snapshots in a row.
+_SAME_VALUE = 3
 _STEADY_RESIDUAL = 0.05
 _STEADY_SHARE = 0.03
 _STEADY_VALUE = 1.25
@@ -464,9 +466,11 @@ def _alarm(m: Mode, why: str, weight: float, factor: Estimate, onset: tuple[int,
 
 
 def _foretold(m: Mode, off: float, alarm: AlarmSection) -> bool:
-    """Whether a held pair grew as its rate says, by enough to tell."""
+    """Whether a held pair grew as its rate says, by enough to tell, at one and the same value: that
+    of a front that forms keeps changing."""
     enough = max(m.grown, 2.0 * m.foretold) >= math.log(10.0)
-    return m.held > alarm.held and enough and off <= 0.1 + 0.05 * m.foretold
+    same = m.steady >= _SAME_VALUE
+    return m.held > alarm.held and enough and same and off <= 0.1 + 0.05 * m.foretold
 
 
 def _short(m: Mode, evidence: Evidence, alarm: AlarmSection) -> bool:

@@ -116,6 +116,7 @@ def mode(**more: object) -> Mode:
         "span": 7,
         "cells": 2.0,
         "held": 7,
+        "steady": 7,
         "match": 0.99,
         "gain": 1.8,
         "foretold": 1.8,
