@@ -7,7 +7,8 @@ The scheme stands in [scheme] and [[scheme.terms]] of a stepwarden.toml, or in o
   stepwarden limit --integrator verlet --spacing 10,10 --wave 'sqrt(9.81 * h)' --snapshot run.npz
 
 Values are numbers, files (k.npy, run.h5:/k) or formulas of a snapshot's fields. With --cells, or
-coefficients in files, the step's matrix is assembled with its boundaries and judged as well.
+coefficients in files, the step's matrix is assembled with its boundaries and judged as well. A
+matrix or a step function of one's own is judged by --matrix and --function.
 
 Exit status: 0 stable, or no step was given; 10 unstable or marginal; 2 bad input.
 """
@@ -29,7 +30,7 @@ def declare(parser: ArgumentParser) -> None:
     scheme = parser.add_argument_group("the scheme")
     scheme.add_argument("--integrator", metavar="NAME", help="euler, heun, rk4, ab3, leapfrog ...")
     scheme.add_argument("--spacing", metavar="DX[,DY[,DZ]]", help="cell sizes")
-    scheme.add_argument("--advection", metavar="U[,V[,W]]", help="velocity")
+    scheme.add_argument("--advection", metavar="U[,V[,W]]", help="velocity (--advection=-1,2)")
     scheme.add_argument(
         "--advection-stencil",
         metavar="NAME",
@@ -61,6 +62,14 @@ def declare(parser: ArgumentParser) -> None:
         type=Path,
         help="one's own: the step's, or with --integrator the right-hand side's (.mtx .npz .npy)",
     )
+    matrix.add_argument(
+        "--function",
+        metavar="MODULE:NAME",
+        help="one's own step in Python, from this folder: takes a state, returns the next one",
+    )
+    matrix.add_argument(
+        "--state", metavar="FILE", help="state to linearise --function at (k.npy, run.h5:/k)"
+    )
     matrix.add_argument("--weight", metavar="FILE", type=Path, help="its energy weights (.npy)")
     matrix.add_argument("--powers", metavar="K", type=int, help="how far powers are followed")
     matrix.add_argument(
@@ -80,7 +89,10 @@ def declare(parser: ArgumentParser) -> None:
 
 
 def run(options: Namespace) -> int:
-    answer = _scheme(options) if options.matrix is None else _matrix(options)
+    if options.function is not None:
+        answer = _function(options)
+    else:
+        answer = _scheme(options) if options.matrix is None else _matrix(options)
     return Exit.GOOD if answer.stable else Exit.ALARM
 
 
@@ -108,6 +120,25 @@ def _matrix(options: Namespace) -> LimitAnswer:
         raise SettingsError("needs --integrator with --matrix", "--step")
     else:
         answer = judge_matrix(matrix, scale, asked)
+    _print(answer, options, None)
+    return answer
+
+
+def _function(options: Namespace) -> LimitAnswer:
+    from monitor.limits.coefficients import Coefficients
+    from monitor.limits.options import TERMS, wish
+    from monitor.limits.stepfunction import StepFunction, judge_function
+    from probes.errors import SettingsError
+
+    if options.matrix or options.scan or any(getattr(options, term) for term in TERMS):
+        raise SettingsError("goes neither with terms, --matrix nor --scan", "--function")
+    if options.step is not None:
+        raise SettingsError("is the function's own", "--step", "leave it out")
+    if options.state is None:
+        raise SettingsError("must be given with --function", "--state", "a file of one state")
+    state = Coefficients(Path(), "")(options.state, "--state")
+    with StepFunction(options.function, Path()) as function:
+        answer = judge_function(function, state, wish(options, 0.0))
     _print(answer, options, None)
     return answer
 

@@ -74,7 +74,7 @@ def judge(scheme: Scheme, box: Box | None, wish: Wish) -> LimitAnswer:
         verdict=verdict,
         why=why,
         stable=stable,
-        notes=tuple(_notes(scheme, limit, local, own)),
+        notes=(*_notes(scheme, limit, local, own), *_left_out(scheme, box)),
     )
 
 
@@ -204,3 +204,12 @@ def _notes(scheme: Scheme, limit: CellLimit, local: CellMap | None, own: float) 
                 f"{spot.confined:.6g} per step"
                 + ("" if spot.confined > 1.0 else ": too narrow to grow")
             )
+
+
+def _left_out(scheme: Scheme, box: Box | None) -> Iterator[str]:
+    if scheme.shape and box is None:
+        cells = ",".join(str(n) for n in scheme.shape)
+        yield (
+            f"a matrix of {math.prod(scheme.shape):,} cells is assembled only if asked for "
+            f"(--cells {cells}); frozen coefficients are strict about narrow spots"
+        )

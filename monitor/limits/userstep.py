@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import math
 import zipfile
+from dataclasses import replace
 from pathlib import Path
 from typing import Any
 
@@ -26,6 +27,7 @@ Array = NDArray[np.float64]
 
 _KINDS = "a Matrix Market file (.mtx), a SciPy sparse matrix (.npz) or an array (.npy)"
 _STEPS = 500
+DENSE = 600  # unknowns up to which a step function's matrix is formed, column by column
 
 
 def read_matrix(path: Path) -> sp.csr_array:
@@ -76,12 +78,17 @@ def read_weight(path: Path, size: int) -> Array:
     return np.asarray(np.sqrt(weight.astype(np.float64)))
 
 
+def answer_of_step(title: str, found: MatrixAnswer, notes: tuple[str, ...]) -> LimitAnswer:
+    """A given step's answer: nothing to choose, only a verdict."""
+    none = Found.none("the step is given as it is")
+    return replace(_answer(title, 0, none, found, Wish()), notes=(*notes, *_notes(found)))
+
+
 def judge_matrix(matrix: sp.csr_array, scale: Array | None, wish: Wish) -> LimitAnswer:
-    """A matrix that is the step itself: nothing to choose, only a verdict."""
+    """A matrix that is the step itself."""
     weight = "the given energy" if scale is not None else "root mean square, all unknowns alike"
     found = analyse(MatrixStep(matrix, scale), weight, wish.powers or _STEPS, wish.transient_max)
-    none = Found.none("the matrix is that of one given step")
-    return _answer(f"the given step's matrix, {matrix.shape[0]} unknowns", 0, none, found, wish)
+    return answer_of_step(f"the given step's matrix, {matrix.shape[0]} unknowns", found, ())
 
 
 def judge_operator(

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import math
 from collections.abc import Callable
 from difflib import get_close_matches
 from typing import Any, cast
@@ -44,6 +45,8 @@ WHOLE = {
     "ftcs": ("euler", "central2"),
 }
 _OWN = ("leapfrog", "rkc", "tableau", "polynomial")
+# Cells up to which a matrix is assembled without being asked for.
+_BY_ITSELF = 20_000
 _DAMPING = {1: 0.05, 2: 2.0 / 13.0}
 
 
@@ -105,9 +108,10 @@ def integrator(name: str, spec: SchemeSpec) -> Integrator:
 
 
 def box(spec: SchemeSpec, scheme: Scheme) -> Box | None:
-    """The grid of the assembled matrix, None where settings name none."""
+    """The grid of the assembled matrix: as settings name it, or that of the coefficients unless it
+    is large. None where there is none."""
     shape = spec.cells or scheme.shape
-    if not shape:
+    if not shape or (not spec.cells and math.prod(shape) > _BY_ITSELF):
         return None
     if len(shape) != scheme.axes or any(n < 1 for n in shape):
         raise SettingsError(

@@ -9,13 +9,13 @@ from __future__ import annotations
 
 from collections.abc import Callable
 from dataclasses import dataclass
-from typing import cast
+from typing import Any, cast
 
 import numpy as np
 import scipy.linalg
 import scipy.sparse as sp
 from numpy.typing import NDArray
-from scipy.sparse.linalg import ArpackError, LinearOperator, eigs
+from scipy.sparse.linalg import ArpackError, ArpackNoConvergence, LinearOperator, eigs
 
 from probes.limits.normal import spectrum
 from probes.limits.records import Found
@@ -140,9 +140,17 @@ def outermost(
     to `towards`. Raises ArpackError where the iteration does not settle."""
     operator = LinearOperator((size, size), matvec=lambda v: apply(v.ravel()), dtype=np.float64)
     start = np.random.default_rng(_SEED).standard_normal(size)
-    values, vectors = eigs(operator, k=6, which="LM", v0=start, ncv=40, tol=1e-8, maxiter=60)
+    values: Any
+    vectors: Any
+    try:
+        values, vectors = eigs(operator, k=6, which="LM", v0=start, ncv=40, tol=1e-8, maxiter=60)
+    except ArpackNoConvergence as error:
+        # Crowded eigenvalues never settle all; those that have are eigenvalues all the same.
+        values, vectors = error.eigenvalues, error.eigenvectors
+        if not len(values):
+            raise
     if towards is None:
         at = int(np.argmax(np.abs(values)))
     else:
         at = int(np.argmin(np.abs(values - towards)))
-    return complex(values[at]), vectors[:, at]
+    return complex(values[at]), np.asarray(vectors[:, at], dtype=np.complex128)

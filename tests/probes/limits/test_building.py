@@ -126,6 +126,16 @@ def test_the_matrixs_grid() -> None:
     assert found.ends == (("periodic", "periodic"), ("dirichlet", "neumann"))
 
 
+def test_a_large_grids_matrix_is_asked_for() -> None:
+    """Fields of 30,000 cells bring no matrix by themselves; smaller ones do."""
+    for n, there in ((30_000, False), (300, True)):
+        given = spec(HEAT | {"coefficient": "k"})
+        made = build(given, lambda text, where, n=n: np.ones(n))  # type: ignore[misc]
+        assert (box(given, made) is not None) == there
+        asked = msgspec.structs.replace(given, cells=(n,))
+        assert box(asked, made) is not None
+
+
 @pytest.mark.parametrize(
     ("terms", "keys", "said"),
     [
