@@ -10,12 +10,12 @@ import struct
 import subprocess
 import sys
 import time
-from collections.abc import Iterable
+from collections.abc import Callable, Iterable
 from pathlib import Path
 from typing import Any
 
 import probes
-from probes.errors import ChildError
+from probes.errors import ChildError, ChildHung
 from probes.spec import WatchSpec
 from probes.wire import (
     LARGEST_FRAME,
@@ -36,6 +36,8 @@ START_SECONDS = 120.0
 GRACE = 5.0
 KILL_SECONDS = 5.0
 MOST_ABANDONED = 2
+# Whoever waits for an answer is asked so often whether to go on.
+SLICE = 0.5
 # The child runs this very package, wherever it was imported from, without its folder becoming one
 # that other modules are looked for in. -P and the working folder "/" keep a run's folder out too.
 _CODE = """
@@ -67,12 +69,14 @@ class ChildKeeper:
         self._process: subprocess.Popen[bytes] | None = None
         self._told: set[str] = set()
         self._abandoned: list[subprocess.Popen[bytes]] = []
+        # Called again and again while an answer is awaited; what it raises ends the waiting.
+        self.meanwhile: Callable[[], None] = lambda: None
 
     def ask(self, request: Request, timeout_s: float) -> Reply:
         """Send a request and wait for its reply, a process being started if there is none.
 
-        Raises ChildError where the process dies, hangs beyond the time limit (it is killed) or
-        answers nonsense; the next request starts a new one. Failed replies are returned.
+        Raises ChildError where the process dies, hangs beyond the time limit (ChildHung; it is
+        killed) or answers nonsense; the next request starts a new one. Failed replies are returned.
         """
         if self._process is None or self._process.poll() is not None:
             self._start()
@@ -144,21 +148,21 @@ class ChildKeeper:
         deadline = time.monotonic() + timeout_s
         try:
             limit = f"{max(0.1, timeout_s):.3f}".encode()
-            _send(process, struct.pack(">I", len(limit)) + limit + encode(request), deadline)
-            (length,) = struct.unpack(">I", _receive(process, 4, deadline + GRACE))
+            self._send(process, struct.pack(">I", len(limit)) + limit + encode(request), deadline)
+            (length,) = struct.unpack(">I", self._receive(process, 4, deadline + GRACE))
             if length > LARGEST_FRAME:
                 raise ChildError(f"a reply of {length} bytes is over the limit")
-            return decode_reply(_receive(process, length, deadline + GRACE))
+            return decode_reply(self._receive(process, length, deadline + GRACE))
         except TimeoutError as error:
             self._end(process)
             self._process = None
-            raise ChildError(
+            raise ChildHung(
                 f"no answer within {timeout_s:.0f} s", remedy="the reading process was ended"
             ) from error
         except (EOFError, BrokenPipeError, ConnectionError) as error:
-            why = _how_it_ended(process)
+            why, hung = _how_it_ended(process)
             self._forget()
-            raise ChildError(f"the reading process {why}") from error
+            raise (ChildHung if hung else ChildError)(f"the reading process {why}") from error
         except ChildError:
             self._forget()
             raise
@@ -166,6 +170,36 @@ class ChildKeeper:
             # A signal came in between: what is in the pipe belongs to nobody now.
             self._forget()
             raise
+
+    def _send(self, process: subprocess.Popen[bytes], data: bytes, deadline: float) -> None:
+        """Write everything, without waiting for ever for a process that does not read."""
+        handle = _pipe(process.stdin).fileno()
+        os.set_blocking(handle, False)
+        view = memoryview(data)
+        while view:
+            self._await([], [handle], deadline)
+            with contextlib.suppress(BlockingIOError):
+                view = view[os.write(handle, view) :]
+
+    def _receive(self, process: subprocess.Popen[bytes], count: int, deadline: float) -> bytes:
+        """Read `count` bytes. Raises EOFError at an early end, TimeoutError at the deadline."""
+        handle = _pipe(process.stdout).fileno()
+        out = bytearray()
+        while len(out) < count:
+            self._await([handle], [], deadline)
+            block = os.read(handle, min(count - len(out), 1 << 20))
+            if not block:
+                raise EOFError
+            out += block
+        return bytes(out)
+
+    def _await(self, reading: list[int], writing: list[int], deadline: float) -> None:
+        """Until a pipe is ready. Raises TimeoutError at the deadline."""
+        while (left := deadline - time.monotonic()) > 0:
+            if any(select.select(reading, writing, [], min(left, SLICE))):
+                return
+            self.meanwhile()
+        raise TimeoutError
 
     def _forget(self) -> None:
         process, self._process = self._process, None
@@ -190,42 +224,15 @@ def _pipe(pipe: Any) -> Any:
     return pipe
 
 
-def _send(process: subprocess.Popen[bytes], data: bytes, deadline: float) -> None:
-    """Write everything, without waiting for ever for a process that does not read."""
-    handle = _pipe(process.stdin).fileno()
-    os.set_blocking(handle, False)
-    view = memoryview(data)
-    while view:
-        left = deadline - time.monotonic()
-        if left <= 0 or not select.select([], [handle], [], left)[1]:
-            raise TimeoutError
-        with contextlib.suppress(BlockingIOError):
-            view = view[os.write(handle, view) :]
-
-
-def _receive(process: subprocess.Popen[bytes], count: int, deadline: float) -> bytes:
-    """Read `count` bytes. Raises EOFError at an early end, TimeoutError at the deadline."""
-    handle = _pipe(process.stdout).fileno()
-    out = bytearray()
-    while len(out) < count:
-        left = deadline - time.monotonic()
-        if left <= 0 or not select.select([handle], [], [], left)[0]:
-            raise TimeoutError
-        block = os.read(handle, min(count - len(out), 1 << 20))
-        if not block:
-            raise EOFError
-        out += block
-    return bytes(out)
-
-
-def _how_it_ended(process: subprocess.Popen[bytes]) -> str:
+def _how_it_ended(process: subprocess.Popen[bytes]) -> tuple[str, bool]:
+    """In words, and whether its own alarm ended it."""
     try:
         code = process.wait(1.0)
     except subprocess.TimeoutExpired:
-        return "closed its pipe"
+        return "closed its pipe", False
     if code == -signal.SIGALRM:
-        return "took too long and ended itself"
+        return "took too long and ended itself", True
     if code < 0:
         with contextlib.suppress(ValueError):
-            return f"was ended by {signal.Signals(-code).name}"
-    return f"ended with status {code}"
+            return f"was ended by {signal.Signals(-code).name}", False
+    return f"ended with status {code}", False

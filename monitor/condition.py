@@ -8,12 +8,13 @@ from __future__ import annotations
 
 import itertools
 import math
-from collections.abc import Mapping
+from collections.abc import Iterable, Mapping
 from dataclasses import dataclass
 
 import msgspec
 import numpy as np
 
+from monitor import bounding
 from monitor.config import AlarmSection
 from monitor.growthlog.records import (
     Channel,
@@ -93,6 +94,7 @@ class State(msgspec.Struct, frozen=True):
     calm: int = 0
     series: dict[str, Series] = {}
     dts: tuple[float, ...] = ()
+    gaps: dict[str, bounding.Gaps] = {}
 
 
 def start() -> State:
@@ -129,13 +131,17 @@ def decide(
         for c in evidence.channels
     }
     dts = (*state.dts, evidence.dt)[-32:] if evidence.dt is not None else state.dts
-    state = msgspec.structs.replace(state, seen=state.seen + 1, series=series, dts=dts)
+    gaps = bounding.followed(state.gaps, x, evidence, fields)
+    state = msgspec.structs.replace(state, seen=state.seen + 1, series=series, dts=dts, gaps=gaps)
+    per = "step" if step is not None else "snapshot"
     findings = [
-        *_outside(evidence, fields),
+        *_not_finite(evidence),
+        *_bounds(bounding.judged(gaps, evidence, fields, alarm.run_length, per)),
         *_collapsing(state.dts),
         *(f for name in series for f in _lines(name, series[name], evidence, alarm, fields)),
         *_tile_line(evidence, alarm, x),
         *_modes(evidence, series, alarm, fields, x),
+        *_heard(evidence),
     ]
     return _settle(state, evidence, findings, alarm)
 
@@ -220,33 +226,35 @@ def _appended(s: Series, x: float, c: Channel, uneven: bool) -> Series:
 # --- findings -------------------------------------------------------------------------------
 
 
-def _outside(evidence: Evidence, fields: Mapping[str, FieldSpec]) -> list[Finding]:
-    """Non-finite values and values outside declared bounds."""
+def _not_finite(evidence: Evidence) -> list[Finding]:
+    """Non-finite values beyond the mask."""
     out = []
     for c in evidence.channels:
         if c.bad:
             place = ""
             if evidence.bad_at is not None and evidence.bad_at[0] == c.f:
                 place = f", first at {list(evidence.bad_at[2])}"
-            out.append(
-                Finding(
-                    "overflowed",
-                    "numerical",
-                    c.f,
-                    f"{c.f} holds {c.bad} values that are not finite{place}",
-                    1e9,
-                )
-            )
-        spec = fields.get(c.f.split("[")[0])
-        if spec is None or isinstance(c.lo, str) or isinstance(c.hi, str):
-            continue
-        if spec.min is not None and c.lo < spec.min:
-            why = f"{c.f} falls to {c.lo:.4g}, below its bound {spec.min:.4g}"
-            out.append(Finding("runaway", "numerical", c.f, why, 1e6))
-        if spec.max is not None and c.hi > spec.max:
-            why = f"{c.f} rises to {c.hi:.4g}, above its bound {spec.max:.4g}"
-            out.append(Finding("runaway", "numerical", c.f, why, 1e6))
+            why = f"{c.f} holds {c.bad} values that are not finite{place}"
+            out.append(Finding("overflowed", "numerical", c.f, why, 1e9))
     return out
+
+
+def _bounds(told: Iterable[bounding.Told]) -> list[Finding]:
+    """Broken bounds alarm, the approach to one is a warning."""
+    return [
+        Finding("runaway", "numerical", t.field, t.why, 1e6)
+        if t.broken
+        else Finding("swelling", "undetermined", t.field, t.why, 2.0)
+        for t in told
+    ]
+
+
+def _heard(evidence: Evidence) -> list[Finding]:
+    """Histories that the settings declare an alarm. What the fields show of it says more."""
+    return [
+        Finding("runaway", "numerical", h.name, f"history {h.why}", 0.5, onset=h.onset)
+        for h in evidence.heard
+    ]
 
 
 def _collapsing(dts: tuple[float, ...]) -> list[Finding]:

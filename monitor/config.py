@@ -14,7 +14,7 @@ from monitor.settings_report import Problem, convert_keys, raise_all
 from monitor.settings_rules import broken_rules
 from probes.errors import SettingsError
 from probes.limits.spec import SchemeSpec
-from probes.spec import FieldSpec, SketchSpec, SnapshotSpec, WatchSpec
+from probes.spec import FieldSpec, HistorySpec, SketchSpec, SnapshotSpec, WatchSpec
 
 # A settings file is written by a person; anything longer is some other file.
 _LARGEST_FILE = 1 << 20
@@ -124,6 +124,7 @@ class Settings(Section, frozen=True, kw_only=True):
     snapshots: SnapshotSpec
     run: RunSection = RunSection()
     fields: dict[str, FieldSpec] = {}
+    histories: dict[str, HistorySpec] = {}
     checkpoints: CheckpointSection = CheckpointSection()
     sketch: SketchSpec = SketchSpec()
     estimate: EstimateSection = EstimateSection()
@@ -197,6 +198,7 @@ def watch_spec(settings: Settings, folder: Path) -> WatchSpec:
         snapshots=settings.snapshots,
         fields=settings.fields,
         sketch=settings.sketch,
+        histories=settings.histories,
     )
 
 

@@ -7,7 +7,7 @@ from collections import Counter
 from collections.abc import Sequence
 from dataclasses import dataclass
 
-from monitor.growthlog.records import Channel, PinRecord, Snapshot
+from monitor.growthlog.records import Channel, Evidence, History, PinRecord, Snapshot
 
 # A snapshot may be restarted from when its growing part is below the larger of this share of the
 # field's variation and a hundred rounding errors of the stored numbers.
@@ -34,6 +34,23 @@ class CleanSnapshot:
 def place(snapshot: Snapshot) -> int:
     """Solver step of a snapshot, or its number in the segment where the step is unknown."""
     return snapshot.index if snapshot.step is None else snapshot.step
+
+
+def as_turn(record: History, path: str, index: int) -> Snapshot:
+    """What a history's alarm says, in the shape of the snapshot that turned. path: of its text
+    file. index: of the snapshot that would come next."""
+    return Snapshot(
+        seq=record.seq,
+        at=record.at,
+        key="",
+        path=path,
+        index=index,
+        seg=record.seg,
+        step=record.step,
+        time=record.time,
+        evidence=Evidence(channels=()),
+        verdict=record.verdict,
+    )
 
 
 def tolerance(snapshot: Snapshot) -> float:
@@ -154,7 +171,9 @@ def clean_files(snaps: Sequence[Snapshot], turn: Snapshot | None) -> list[CleanS
         left[snapshot.path, snapshot.record] -= 1
         gone = left[snapshot.path, snapshot.record] > 0
         reason = "" if gone else clean_reason(snapshot, turn, before)
-        if reason and snapshot.record is not None:
+        if reason and snapshot.path.endswith(".sketch"):
+            reason = f"tapped, no checkpoint: take one from this step or before; {reason}"
+        elif reason and snapshot.record is not None:
             reason = f"record {snapshot.record}, {reason}"
         if reason:
             out.append(CleanSnapshot(place(snapshot), snapshot.path, False, "", reason))

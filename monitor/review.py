@@ -13,6 +13,7 @@ from monitor.growthlog.records import (
     Closed,
     Condition,
     Estimate,
+    History,
     Intent,
     Kind,
     Num,
@@ -27,7 +28,7 @@ from monitor.growthlog.records import (
     Skipped,
     Snapshot,
 )
-from monitor.lastclean import CleanSnapshot, clean_files, clean_pins, kept_pins, place
+from monitor.lastclean import CleanSnapshot, as_turn, clean_files, clean_pins, kept_pins, place
 from probes.tiling import Tiling
 
 if TYPE_CHECKING:
@@ -102,6 +103,7 @@ class Review:
     steps, or snapshot numbers where `per` is "snapshot" because the files do not tell their steps.
     turn: the alarm's record (or the first overflow's), None if there was none. told: the record
     that the values come from, the turn or else the segment's last. growth: factor per step.
+    histories: the last record of each; heard: the first of one that is an alarm.
     later: a clean snapshot later than `clean` that nobody pinned. ended: why guard ended, "" if its
     closing record is missing.
     """
@@ -125,11 +127,13 @@ class Review:
     per: str
     contamination: Estimate
     local_contamination: Estimate
+    histories: tuple[History, ...] = ()
+    heard: History | None = None
     cautions: tuple[str, ...] = ()
 
     @property
     def alarmed(self) -> bool:
-        return any(s.alarmed for s in self.segments)
+        return self.heard is not None or any(s.alarmed for s in self.segments)
 
     @property
     def overflowed(self) -> bool:
@@ -206,6 +210,23 @@ class Review:
             else None,
             "foreseeable_growth": list(foresight) if foresight else None,
             "evidence": self.told.verdict.why if self.told else "",
+            "drift_of_totals": {
+                c.f: c.drift for c in self.told.evidence.channels if c.drift is not None
+            }
+            if self.told
+            else {},
+            "histories": [
+                {
+                    "name": h.name,
+                    "step": h.step,
+                    "value": h.value,
+                    "condition": h.verdict.condition,
+                    "alarmed": h.verdict.alarmed,
+                    "growth_per_step": h.verdict.factor.value if h.verdict.factor else None,
+                    "evidence": h.verdict.why,
+                }
+                for h in self.histories
+            ],
             "snapshots": self.snapshots,
             "skipped": len(self.skipped),
             "segment": self.segment,
@@ -241,8 +262,12 @@ def summarise(contents: LogContents) -> Review:
     turn = next((s for s in snaps if _turned(s)), None)
     told = turn or (snaps[-1] if snaps else None)
     pins = _only(PinRecord, records)
-    pinned = clean_pins(pins, snaps, turn)
-    loose = clean_files(snaps, turn)
+    heard = next((h for h in _only(History, records) if h.verdict.alarmed), None)
+    cut = turn
+    if turn is None and heard is not None and snaps:
+        cut = as_turn(heard, "", snaps[-1].index + 1)
+    pinned = clean_pins(pins, snaps, cut)
+    loose = clean_files(snaps, cut)
     clean = pinned[-1] if pinned else (loose[-1] if loose else None)
     opened, pulses = _only(Opened, records), _only(PulseChange, records)
     last = records[-1] if records else None
@@ -270,6 +295,8 @@ def summarise(contents: LogContents) -> Review:
         per="step" if all(s.step is not None for s in snaps) else "snapshot",
         contamination=share,
         local_contamination=local,
+        histories=tuple({h.name: h for h in _only(History, records)}.values()),
+        heard=heard,
     )
     return replace(review, cautions=(*_log_cautions(contents), *_cautions(review)))
 
@@ -459,7 +486,7 @@ def _cautions(review: Review) -> list[str]:
         out.append("the region is a whole tile: no closer box was found on the cells")
     if review.turn is not None:
         out += _turn_cautions(review, review.turn)
-    elif review.snapshots:
+    elif review.snapshots and review.heard is None:
         out.append("no alarm is no proof of stability")
     others = [s.number for s in review.segments if s.alarmed and s.number != review.segment]
     if others:

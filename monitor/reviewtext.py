@@ -9,7 +9,7 @@ from datetime import UTC, datetime
 from monitor.foresight import foresight_text
 from monitor.lastclean import CleanSnapshot, place
 from monitor.review import Review
-from monitor.wording import clean, estimate_text, number
+from monitor.wording import clean, drift_text, estimate_text, history_text, number
 
 WIDTH = 98
 _LABEL = 10
@@ -42,7 +42,10 @@ def _headline(review: Review) -> str:
         return f"{name}: no snapshot was judged"
     what = _KINDS[review.kind]
     if review.turn is None:
-        return f"{name}: {review.condition}, {what}, no alarm"
+        alarm = "no alarm"
+        if review.heard is not None:
+            alarm = f"alarm of the history {review.heard.name} alone"
+        return f"{name}: {review.condition}, {what}, {alarm}"
     return f"{name}: {review.condition}, {what}, alarm at {review.per} {place(review.turn)}"
 
 
@@ -52,6 +55,13 @@ def _rows(review: Review) -> Iterator[tuple[str, str]]:
     yield from _clean_rows(review)
     if review.told is not None and (foresight := foresight_text(review.told.evidence)):
         yield "Warning", foresight
+    if review.told is not None and (drift := drift_text(review.told.evidence)):
+        yield "Totals", f"change since the segment began: {drift}"
+    if review.heard is not None:
+        yield "History", f"first alarm: {history_text(review.heard)}"
+    for history in review.histories:
+        if history is not review.heard:
+            yield "History", history_text(history)
     for deed in review.deeds:
         tries = f" ({deed.attempts} attempts)" if deed.attempts > 1 else ""
         detail = f": {deed.detail}" if deed.detail else ""

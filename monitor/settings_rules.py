@@ -12,7 +12,7 @@ from typing import TYPE_CHECKING, Any
 import msgspec
 
 from monitor.settings_report import Problem, numbered_place, section_place, shown
-from probes.spec import FieldSpec, RawSpec, SnapshotSpec
+from probes.spec import FieldSpec, HistorySpec, RawSpec, SnapshotSpec
 
 if TYPE_CHECKING:
     from monitor.config import CheckpointSection, StopStep
@@ -61,6 +61,7 @@ BOUNDS: dict[str, dict[str, Bounds]] = {
         "spacing": _POSITIVE,
         "growth_per_time": _NOT_NEGATIVE,
     },
+    "histories": {"step_factor": _FROM_ONE},
     "run": {"pid": _NOT_NEGATIVE, "last_step": _NOT_NEGATIVE, "idle_seconds": _NOT_NEGATIVE},
     "checkpoints": {"parts": _NOT_NEGATIVE},
     "sketch": {
@@ -94,6 +95,8 @@ BOUNDS: dict[str, dict[str, Bounds]] = {
 }
 FREE = {
     "fields": ("fill", "origin", "min", "max"),
+    # Columns are judged below: a number from 1, or a heading.
+    "histories": ("column", "step", "time", "min", "max"),
     # Judged where they are put together: probes.limits.building and probes.limits.scheme.
     "scheme": ("spacing", "tableau", "weights", "polynomial"),
     "terms": (
@@ -109,6 +112,10 @@ def broken_rules(sections: Mapping[str, Any]) -> Iterator[Problem]:
             for field, spec in section.items():
                 yield from _within(spec, "fields", section_place("fields", field))
                 yield from _field(field, spec)
+        elif name == "histories":
+            for history, about in section.items():
+                yield from _within(about, "histories", section_place("histories", history))
+                yield from _history(history, about)
         elif name == "stop":
             for n, rung in enumerate(section, 1):
                 if rung is msgspec.UNSET:
@@ -227,9 +234,7 @@ def _field(name: str, spec: FieldSpec) -> Iterator[Problem]:
     if "[" in name:
         remedy = f"write [fields.{name.split('[')[0] or 'NAME'}]"
         yield Problem(place, "components of a field share its settings", remedy)
-    if spec.min is not None and spec.max is not None and spec.min >= spec.max:
-        what = f"must be less than max, but {spec.min:g} is not less than {spec.max:g}"
-        yield Problem(f"{place} min", what)
+    yield from _ends(spec, place)
     lengths = {
         key: len(value)
         for key in ("ghost", "spacing", "origin", "periodic")
@@ -238,6 +243,50 @@ def _field(name: str, spec: FieldSpec) -> Iterator[Problem]:
     if len(set(lengths.values())) > 1:
         told = ", ".join(f"{key} {n}" for key, n in lengths.items())
         yield Problem(place, f"values per axis disagree on the number of axes: {told}")
+
+
+def _ends(spec: FieldSpec | HistorySpec, place: str) -> Iterator[Problem]:
+    if spec.min is not None and spec.max is not None and spec.min >= spec.max:
+        what = f"must be less than max, but {spec.min:g} is not less than {spec.max:g}"
+        yield Problem(f"{place} min", what)
+
+
+# --- histories ------------------------------------------------------------------------------
+
+_GROUPS = ("value", "step", "time")
+
+
+def _history(name: str, spec: HistorySpec) -> Iterator[Problem]:
+    place = section_place("histories", name)
+    if not name.strip():
+        yield Problem(place, "a history needs a name")
+    if not spec.path.strip():
+        yield Problem(f"{place} path", "must name a text file")
+    yield from _ends(spec, place)
+    for key in ("column", "step", "time"):
+        value = getattr(spec, key)
+        if isinstance(value, int) and value < 1:
+            yield Problem(f"{place} {key}", f"columns are counted from 1, not {shown(value)}")
+        elif value != "" and spec.pattern:
+            yield Problem(f"{place} {key}", "has no meaning beside a pattern, whose groups tell it")
+    if not spec.pattern and spec.column == "":
+        remedy = 'write for example column = "energy", column = 3 or a pattern'
+        yield Problem(f"{place} column", "must say which number of a line is meant", remedy)
+    found: set[str] = set()
+    for pattern in spec.pattern:
+        try:
+            found |= set(re.compile(pattern).groupindex)
+        except re.error as error:
+            what = f"{shown(pattern)} is no regular expression: {error}"
+            yield Problem(f"{place} pattern", what)
+            return
+    if spec.pattern and "value" not in found:
+        remedy = "write for example 'energy = (?P<value>\\S+)'"
+        yield Problem(f"{place} pattern", "has no group named value", remedy)
+    for group in sorted(found - set(_GROUPS)):
+        near = get_close_matches(group, _GROUPS, 1)
+        remedy = f"did you mean '{near[0]}'?" if near else f"known are {', '.join(_GROUPS)}"
+        yield Problem(f"{place} pattern", f"unknown group {shown(group)}", remedy)
 
 
 # --- commands and the stop ladder -----------------------------------------------------------

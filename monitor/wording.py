@@ -11,7 +11,16 @@ from collections.abc import Callable
 from datetime import datetime
 from typing import Any
 
-from monitor.growthlog.records import Condition, Estimate, Kind, Num, Snapshot, Verdict
+from monitor.growthlog.records import (
+    Condition,
+    Estimate,
+    Evidence,
+    History,
+    Kind,
+    Num,
+    Snapshot,
+    Verdict,
+)
 
 # A small picture of a level for each condition, three characters wide, so that a condition is told
 # by its shape and its word as well as by its colour.
@@ -247,6 +256,33 @@ def condition_sign(condition: Condition, ascii: bool = False) -> str:
 def kind_text(kind: Kind) -> str:
     """What kind of growth, in words."""
     return _KINDS[kind]
+
+
+def drift_text(evidence: Evidence) -> str:
+    """How far the totals of conserved fields have drifted, "" where none is conserved:
+    "total of h +1.2e-6, of u -3.1e-4"."""
+    told = [
+        f"of {clean(c.f)} {'+' if float(c.drift) > 0.0 else ''}{number(c.drift, 2)}"
+        for c in evidence.channels
+        if c.drift is not None
+    ]
+    return f"total {', '.join(told)}" if told else ""
+
+
+def history_text(record: History) -> str:
+    """Where a history stands: "energy 1.2e3 at step 1,203, swelling: its changes grew ...; ruin in
+    210 to 260 steps"."""
+    per = "line" if record.step is None else "step"
+    at = f"step {exact(record.step)}" if record.step is not None else f"line {record.sample + 1:,}"
+    value = clean(record.print) or number(record.value)
+    verdict = record.verdict
+    told = f"{clean(record.name)} {value} at {at}, {verdict.condition}"
+    if verdict.why:
+        told += f": {clean(verdict.why.removeprefix(f'{record.name}: '))}"
+    for name, left in (("ruin", verdict.ruin), ("overflow", verdict.overflow)):
+        if left is not None and left.value is not None:
+            told += f"; {name} in {steps_text(left, per)}"
+    return told
 
 
 def box_text(box: tuple[tuple[int, int], ...]) -> str:

@@ -34,9 +34,10 @@ from probes.errors import (
 )
 from probes.fieldpass import FieldPass
 from probes.formats import find_reader, notes, open_snapshot, readers
+from probes.hearing import Hearing
 from probes.masks import MaskBook
 from probes.securing import drop, secure, stop_file
-from probes.snapshot import Contents, FieldInfo
+from probes.snapshot import Contents, FieldInfo, SketchedAlready
 from probes.spec import FieldSpec, SnapshotSpec, WatchSpec
 from probes.wire import (
     Arrival,
@@ -51,7 +52,9 @@ from probes.wire import (
     FileId,
     FindCheckpoint,
     Found,
+    HistoriesRead,
     Look,
+    ReadHistories,
     ReadSnapshot,
     Ready,
     Reply,
@@ -78,6 +81,7 @@ class Child:
         self._watching: Watching | None = None
         self._masks = MaskBook()
         self._finding: dict[tuple[tuple[str, ...], int], Watching] = {}
+        self._histories: dict[str, Hearing] = {}
 
     def answer(self, request: Request) -> Reply:
         """The reply to one request; expected failures become Failed."""
@@ -123,6 +127,8 @@ class Child:
                 return drop(request.folder)
             case StopFile():
                 return stop_file(request)
+            case ReadHistories():
+                return self._read_histories(request)
             case Examine():
                 return self._examine(request)
 
@@ -140,6 +146,10 @@ class Child:
         self._watching = Watching(
             request.watch.folder, request.watch.snapshots, self._describe, request.known
         )
+        self._histories = {
+            name: Hearing(name, Path(request.watch.folder) / spec.path, spec)
+            for name, spec in request.watch.histories.items()
+        }
         return Ready(readers=tuple(readers()), notes=notes())
 
     def _describe(self, path: str) -> Contents:
@@ -156,7 +166,7 @@ class Child:
         blocks: list[BlockReply] = []
         crops: list[Crop] = []
         told: list[str] = []
-        read = 0
+        read, begun = 0, ""
         for file in arrival.files:
             _unchanged(file, arrival.growing)
             with (
@@ -167,6 +177,11 @@ class Child:
                 if arrival.record >= contents.records:
                     raise NotYet(f"record {arrival.record} is not there yet", file.path)
                 arrival = _with_clock(arrival, contents, self._watch.snapshots.step_factor)
+                if isinstance(snapshot, SketchedAlready):
+                    tapped = snapshot.sketched(arrival.record, self._watch.sketch)
+                    blocks += _wanted(tapped.blocks, self._watch)
+                    told, begun = [*told, *tapped.notes], tapped.begun
+                    continue
                 chosen = _chosen(contents, file, self._watch)
                 if len(arrival.files) == 1 or arrival.files[0] is file:
                     told += contents.notes
@@ -202,7 +217,15 @@ class Child:
             notes=tuple(dict.fromkeys(told)),
             seconds=time.monotonic() - began,
             bytes_read=read,
+            begun=begun,
         )
+
+    def _read_histories(self, request: ReadHistories) -> HistoriesRead:
+        for name in request.again:
+            if name in self._histories:
+                self._histories[name].again()
+        known = [self._histories[name] for name in request.names if name in self._histories]
+        return HistoriesRead(heard=tuple(history.read(request.budget) for history in known))
 
     def _find(self, request: FindCheckpoint) -> Found:
         found = self._complete(request.pattern, request.parts, self._describe_checkpoint)
@@ -322,6 +345,11 @@ def _chosen(
             same = info.name.lstrip("/") == path if path else wanted in (name, info.name, leaf)
             if same:
                 yield info, wanted, spec
+
+
+def _wanted(blocks: tuple[BlockReply, ...], watch: WatchSpec) -> Iterator[BlockReply]:
+    """Blocks of a tapped step that are to be judged."""
+    return (b for b in blocks if not watch.fields or b.field.split("[")[0] in watch.fields)
 
 
 def _with_companions(

@@ -50,3 +50,7 @@ class ArrivalError(StepwardenError):
 
 class ChildError(StepwardenError):
     """The reading process died, hung or answered nonsense."""
+
+
+class ChildHung(ChildError):
+    """The reading process did not answer within its time limit."""

@@ -16,7 +16,8 @@ from typing import Protocol, Self, runtime_checkable
 import numpy as np
 from numpy.typing import NDArray
 
-from probes.spec import SnapshotSpec
+from probes.spec import SketchSpec, SnapshotSpec
+from probes.wire import Sketched
 
 
 @dataclass(frozen=True, slots=True)
@@ -93,6 +94,15 @@ class OpenSnapshot(Protocol):
         error: BaseException | None,
         trace: TracebackType | None,
     ) -> None: ...
+
+
+@runtime_checkable
+class SketchedAlready(Protocol):
+    """An open file that holds sketches in place of values (see `probes.tap`)."""
+
+    def sketched(self, record: int, spec: SketchSpec) -> Sketched:
+        """What was sketched at one record. Raises Refused where the settings differ."""
+        ...
 
 
 @runtime_checkable

@@ -74,7 +74,8 @@ class FieldSpec(msgspec.Struct, frozen=True, kw_only=True, forbid_unknown_fields
     periodic: per axis; () means not known.
     grid: False for values without a grid (unstructured numbering): taken as one row of numbers
         and judged by its bulk only.
-    min, max: bounds that the field must keep.
+    min, max: bounds that the field must keep: a value outside is an alarm, the way there a warning.
+    conserved: the sum over all cells should stay what it is; how far it drifts is told.
     growth_per_time: a physical growth rate per unit time that is expected and never alarmed.
     """
 
@@ -90,6 +91,7 @@ class FieldSpec(msgspec.Struct, frozen=True, kw_only=True, forbid_unknown_fields
     grid: bool = True
     min: float | None = None
     max: float | None = None
+    conserved: bool = False
     growth_per_time: float = 0.0
 
 
@@ -109,14 +111,43 @@ class SketchSpec(msgspec.Struct, frozen=True, kw_only=True, forbid_unknown_field
     budget_mb: int = 32
 
 
+class HistorySpec(msgspec.Struct, frozen=True, kw_only=True, forbid_unknown_fields=True):
+    """``[histories.NAME]``: a number that the solver prints as it goes, in a text file.
+
+    path: the file, relative to the configuration file.
+    column: which number of a line: a heading of the table (or the key of "key = value"), or the
+        number of the column from 1.
+    step, time: the same for step and time; "" where the file does not say. Without steps lines are
+        counted.
+    pattern: instead of columns, regular expressions that are tried on each line; what their groups
+        named value, step and time match is taken, step and time from earlier lines too.
+    step_factor: solver steps per number found.
+    min, max: bounds that the number must keep.
+    alarm: take exponential growth, a broken bound or a value that is not finite for an alarm of the
+        run; without this they are only told.
+    """
+
+    path: str
+    column: str | int = ""
+    step: str | int = ""
+    time: str | int = ""
+    pattern: tuple[str, ...] = ()
+    step_factor: int = 1
+    min: float | None = None
+    max: float | None = None
+    alarm: bool = False
+
+
 class WatchSpec(msgspec.Struct, frozen=True, kw_only=True, forbid_unknown_fields=True):
     """Everything the reading process needs to know.
 
     folder: absolute folder that relative patterns start from.
     fields: specs by name; empty means every field that is found, with default settings.
+    histories: text files to follow, by name.
     """
 
     folder: str
     snapshots: SnapshotSpec
     fields: dict[str, FieldSpec] = {}
     sketch: SketchSpec = SketchSpec()
+    histories: dict[str, HistorySpec] = {}

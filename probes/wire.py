@@ -210,6 +210,16 @@ class StopFile(Message, frozen=True, kw_only=True, tag="stopfile"):
     text: str = ""
 
 
+class ReadHistories(Message, frozen=True, kw_only=True, tag="histories"):
+    """What the text logs of these histories have that was not read yet, `budget` bytes each at
+    most. A new reading process begins them from the start, and so it does those named by `again`.
+    """
+
+    names: tuple[str, ...]
+    budget: int = 1 << 20
+    again: tuple[str, ...] = ()
+
+
 class Examine(Message, frozen=True, kw_only=True, tag="examine"):
     """Describe one file or folder for `scout`: format, fields, shapes, steps."""
 
@@ -217,6 +227,30 @@ class Examine(Message, frozen=True, kw_only=True, tag="examine"):
 
 
 # --- replies --------------------------------------------------------------------------------
+
+
+class Heard(msgspec.Struct, frozen=True, kw_only=True):
+    """New samples of one history, in file order.
+
+    first: number of the first of them, from 0 in this file as it was begun. file: 16 hexadecimal
+    digits for the file and how often it was begun again. table: float64 (samples, 4): step, time
+    (both NaN if unknown), value, unit of its print. odd: how unusual values were printed, by row.
+    mtime: of the file, seconds. more: bytes are left. trouble: why it cannot be read, or "".
+    """
+
+    name: str
+    file: str = ""
+    first: int = 0
+    table: Packed
+    odd: dict[int, str] = {}
+    mtime: float = 0.0
+    more: bool = False
+    trouble: str = ""
+    notes: tuple[str, ...] = ()
+
+
+class HistoriesRead(Message, frozen=True, kw_only=True, tag="heard"):
+    heard: tuple[Heard, ...]
 
 
 class Ready(Message, frozen=True, kw_only=True, tag="ready"):
@@ -236,7 +270,10 @@ class Looked(Message, frozen=True, kw_only=True, tag="looked"):
 
 
 class Sketched(Message, frozen=True, kw_only=True, tag="sketched"):
-    """arrival: as read, with step and time filled from the contents where the name had none."""
+    """arrival: as read, with step and time filled from the contents where the name had none.
+
+    begun: digits of the solver process that it was tapped in; another one begins a new segment.
+    """
 
     arrival: Arrival
     blocks: tuple[BlockReply, ...]
@@ -244,6 +281,7 @@ class Sketched(Message, frozen=True, kw_only=True, tag="sketched"):
     notes: tuple[str, ...] = ()
     seconds: float = 0.0
     bytes_read: int = 0
+    begun: str = ""
 
 
 class Found(Message, frozen=True, kw_only=True, tag="found"):
@@ -282,9 +320,18 @@ class Failed(Message, frozen=True, kw_only=True, tag="failed"):
 
 
 Request = (
-    Configure | Look | ReadSnapshot | Settled | FindCheckpoint | Secure | Drop | StopFile | Examine
+    Configure
+    | Look
+    | ReadSnapshot
+    | Settled
+    | FindCheckpoint
+    | Secure
+    | Drop
+    | StopFile
+    | ReadHistories
+    | Examine
 )
-Reply = Ready | Looked | Sketched | Found | Secured | Done | Examined | Failed
+Reply = Ready | Looked | Sketched | Found | Secured | Done | HistoriesRead | Examined | Failed
 
 _encoder = msgspec.msgpack.Encoder()
 _requests: msgspec.msgpack.Decoder[Request] = msgspec.msgpack.Decoder(Request)

@@ -108,8 +108,12 @@ class Ladder:
         self._hold(now, why)
 
     def resume(self, deeds: Sequence[Deed], now: float) -> None:
-        """Go on where the deeds of this segment in the log end."""
+        """Go on where the deeds of this segment in the log end. If `HOLD` was written and is gone,
+        somebody has dealt with it, and what runs now is not the run that was to be stopped."""
         ours = [d for d in deeds if d.intent.act in ACTS]
+        if self._hold_removed(deeds):
+            self._state = "over"
+            return
         if not ours:
             if any(d.intent.act == "hold" for d in deeds) and self._rungs:
                 self._state = "ready"
@@ -310,6 +314,13 @@ class Ladder:
         if isinstance(reply, Failed):
             return reply.what
         return reply if isinstance(reply, Done) else "not understood by the reading process"
+
+    def _hold_removed(self, deeds: Sequence[Deed]) -> bool:
+        written = any(
+            d.intent.act == "hold" and d.last is not None and d.last.outcome != "failed"
+            for d in deeds
+        )
+        return written and not (self._log_folder / HOLD_NAME).exists()
 
     def _file(self, rung: StopStep) -> str:
         return str(self._folder / rung.path)

@@ -24,13 +24,24 @@ def run(options: Namespace) -> int:
     from monitor.logfinding import find_log
     from monitor.review import summarise
 
-    review = summarise(read_log(find_log(options.log)))
+    log = find_log(options.log)
+    contents = read_log(log)
+    review = summarise(contents)
+    advice = None
+    if review.alarmed or review.overflowed:
+        from monitor.limits.restarting import advise, settings_of
+
+        advice = advise(settings_of(contents), log.parent, review.growth)
     if options.json:
         import json
 
-        print(json.dumps(review.json_object(), indent=1, allow_nan=False))
+        plain = review.json_object()
+        plain["restart"] = None if advice is None else advice.json_object()
+        print(json.dumps(plain, indent=1, allow_nan=False))
     else:
         print(review.text())
+        if advice is not None:
+            print(advice.write_up())
     if review.overflowed:
         return Exit.OVERFLOWED
     return Exit.ALARM if review.alarmed else Exit.GOOD

@@ -18,10 +18,12 @@ from monitor.growthlog.records import Condition, Estimate, Evidence, Snapshot
 from monitor.wording import (
     age_text,
     box_text,
+    drift_text,
     duration_text,
     exact,
     factor_text,
     headroom_text,
+    history_text,
     moment_text,
     number,
     place_text,
@@ -35,6 +37,7 @@ _LOOKS = 3
 
 # The worse half of the ladder: somebody has to do something.
 GRAVE: tuple[Condition, ...] = ("runaway", "overflowed")
+_CALM: tuple[Condition, ...] = ("gathering", "quiet")
 
 
 @dataclass(frozen=True, slots=True)
@@ -103,6 +106,7 @@ def rows(story: Story, health: Health, now: float) -> list[Row]:
         out.append(Row("clean", clean(story)))
         out.append(Row("run", pulse(story, last, now)))
     out.append(Row("guard", *guard(story, health, now)))
+    out += [Row("also", *also) for also in histories(story)]
     return out
 
 
@@ -118,6 +122,8 @@ def advice(story: Story, health: Health, now: float) -> tuple[str, str]:
     condition = last.verdict.condition
     if condition in GRAVE:
         return _grave(story, health), condition
+    if any(r.verdict.alarmed and r.verdict.condition in GRAVE for r in story.histories.values()):
+        return _grave(story, health), "runaway"
     if over(story):
         if story.now is not None and story.now.alarm is not None:
             return _restart(story), "runaway"
@@ -260,6 +266,15 @@ def _countdown(name: str, steps: Estimate | None, pace: float | None, per: str) 
     return f"{name} in {told}"
 
 
+def histories(story: Story) -> list[tuple[str, str]]:
+    """The histories on one line, those that call for attention first; nothing without any."""
+    records = sorted(story.histories.values(), key=lambda r: r.verdict.condition in _CALM)
+    if not records:
+        return []
+    worst = records[0].verdict.condition
+    return [("; ".join(history_text(r) for r in records), "" if worst in _CALM else worst)]
+
+
 def clean(story: Story) -> str:
     """What to restart from."""
     found = story.clean()
@@ -287,6 +302,8 @@ def pulse(story: Story, last: Snapshot, now: float) -> str:
     if word == "arriving" and every:
         word = f"arriving every {duration_text(every)}"
     parts.append(word)
+    if drift := drift_text(last.evidence):
+        parts.append(drift)
     if story.skipped:
         parts.append(f"{exact(story.skipped)} skipped")
     if earlier := _earlier_alarm(story):

@@ -18,6 +18,7 @@ from monitor.growthlog.records import (
     Closed,
     CloseUp,
     Condition,
+    History,
     Intent,
     Opened,
     Outcome,
@@ -29,8 +30,8 @@ from monitor.growthlog.records import (
     Snapshot,
     TileMap,
 )
-from monitor.lastclean import CleanSnapshot
-from monitor.wording import place_text
+from monitor.lastclean import CleanSnapshot, as_turn
+from monitor.wording import history_text, place_text
 
 # Acts of the stop ladder.
 STOPPING = ("stop-file", "command", "signal", "kill")
@@ -86,6 +87,7 @@ class Stretch:
 class Story:
     """Facts for the screen. `take` records in file order; everything else only reads.
 
+    histories: the last record of each; heard: the first of the present segment that is an alarm.
     maps: the latest of each field, with the place in the run that it was made at. deeds: of the
     present segment, by act and request.
     """
@@ -97,6 +99,8 @@ class Story:
         self.closed: Closed | None = None
         self.pins: dict[str, PinRecord] = {}
         self.deeds: dict[tuple[str, str], Deed] = {}
+        self.histories: dict[str, History] = {}
+        self.heard: History | None = None
         self.maps: dict[str, tuple[TileMap, str]] = {}
         self.closeup: CloseUp | None = None
         self.events: deque[Event] = deque(maxlen=_EVENTS)
@@ -129,7 +133,10 @@ class Story:
         stretch = self.now
         if stretch is None:
             return None
-        return stretch.checkpoints.clean(tuple(self.pins.values()), stretch.alarm)
+        alarm = stretch.alarm
+        if alarm is None and self.heard is not None and stretch.last is not None:
+            alarm = as_turn(self.heard, "", stretch.last.index + 1)
+        return stretch.checkpoints.clean(tuple(self.pins.values()), alarm)
 
     def take(self, records: Iterable[AnyRecord]) -> None:
         """Fold records in."""
@@ -181,9 +188,12 @@ class Story:
                 self.stretches.append(stretch)
                 self.maps.clear()
                 self.deeds.clear()
+                self.heard = None
                 self.closeup = self.pulse = None
                 if record.why != "start":
                     self._event(record.at, "swelling", telling.segment(record))
+            case History():
+                self._history(record)
             case Skipped():
                 self.skipped += 1
                 told = f"{record.reason}: {record.detail}"
@@ -207,6 +217,16 @@ class Story:
             case Closed():
                 self.closed = record
                 self._event(record.at, "", f"guard ended: {record.why} (status {record.status})")
+
+    def _history(self, record: History) -> None:
+        before = self.histories.get(record.name)
+        self.histories[record.name] = record
+        if record.verdict.alarmed and self.heard is None:
+            self.heard = record
+        was = before.verdict.condition if before is not None else "gathering"
+        if record.verdict.condition != was:
+            text = f"history {history_text(record)}"
+            self._event(record.at, record.verdict.condition, text)
 
     def _pin(self, pin: PinRecord) -> None:
         before = self.pins.get(pin.pin)

@@ -2,9 +2,10 @@
 
 Evidence and verdict have budgets of their own, so that evidence is cut before it is decided upon,
 whatever the verdict will say. Of the evidence these go, in this order and only as far as needed:
-worst tiles beyond 4, edges, limits, modes beyond 2, channels beyond 12, then modes and channels
-down to one. Channels without non-finite values go first, of these the ones with the lowest ripple.
-`Evidence.cut` counts the entries left out. At last the path loses its beginning.
+worst tiles beyond 4, edges, limits, heard histories beyond 2, modes beyond 2, channels beyond 12,
+then modes and channels down to one. Channels without non-finite values go first, of these those
+without bounds, of these the ones with the lowest ripple. `Evidence.cut` counts the entries left
+out. At last the path loses its beginning.
 """
 
 from __future__ import annotations
@@ -14,7 +15,7 @@ from collections.abc import Iterator
 from msgspec.structs import replace
 
 from monitor.growthlog.plain import plain_json
-from monitor.growthlog.records import Channel, Estimate, Evidence, Snapshot, Verdict
+from monitor.growthlog.records import Channel, Estimate, Evidence, History, Snapshot, Verdict
 
 # Bytes of JSON, without the newline.
 LONGEST_SNAPSHOT = 3998
@@ -22,6 +23,7 @@ _EVIDENCE = 2400
 _WHY = 320
 _REASON = 100
 _NAME = 160
+_HEARD = 200
 
 
 def fit_evidence(evidence: Evidence) -> Evidence:
@@ -45,6 +47,16 @@ def fit_verdict(verdict: Verdict) -> Verdict:
         factor=_with_short_reason(verdict.factor),
         ruin=_with_short_reason(verdict.ruin),
         overflow=_with_short_reason(verdict.overflow),
+    )
+
+
+def fit_history(record: History) -> History:
+    """`record` with its texts shortened where they are too long."""
+    return replace(
+        record,
+        name=_name(record.name),
+        print=shortened(record.print, _REASON),
+        verdict=fit_verdict(record.verdict),
     )
 
 
@@ -86,6 +98,8 @@ def _shorter(evidence: Evidence) -> Iterator[Evidence]:
     yield evidence
     evidence = replace(evidence, limits={})
     yield evidence
+    evidence = replace(evidence, heard=evidence.heard[:2])
+    yield evidence
     evidence = replace(evidence, modes=evidence.modes[:2])
     yield evidence
     evidence = _with_channels(evidence, 12)
@@ -103,18 +117,23 @@ def _with_channels(evidence: Evidence, most: int) -> Evidence:
     return replace(evidence, channels=tuple(c for c in evidence.channels if id(c) in kept))
 
 
-def _importance(channel: Channel) -> tuple[bool, float]:
-    return channel.bad > 0, channel.ripple if channel.ripple is not None else float("-inf")
+def _importance(channel: Channel) -> tuple[bool, bool, float]:
+    ripple = channel.ripple if channel.ripple is not None else float("-inf")
+    return channel.bad > 0, channel.bounded, ripple
 
 
 def _entries(evidence: Evidence) -> int:
-    parts = (evidence.worst, evidence.edges, evidence.limits, evidence.modes, evidence.channels)
+    parts = (
+        *(evidence.worst, evidence.edges, evidence.limits),
+        *(evidence.heard, evidence.modes, evidence.channels),
+    )
     return sum(len(part) for part in parts)
 
 
 def _with_short_texts(evidence: Evidence) -> Evidence:
     """Names and reasons as they occur are much shorter than this; a file may hold anything."""
     where, bad_at, line = evidence.where, evidence.bad_at, evidence.line
+    heard = evidence.heard
     return replace(
         evidence,
         channels=tuple(replace(c, f=_name(c.f)) for c in evidence.channels),
@@ -122,6 +141,7 @@ def _with_short_texts(evidence: Evidence) -> Evidence:
         line=replace(line, f=_name(line.f)) if line is not None else None,
         edges={_name(k): v for k, v in evidence.edges.items()},
         limits={_name(k): v for k, v in evidence.limits.items()},
+        heard=tuple(replace(h, name=_name(h.name), why=shortened(h.why, _HEARD)) for h in heard),
         where=(_name(where[0]), _name(where[1])) if where is not None else None,
         bad_at=(_name(bad_at[0]), _name(bad_at[1]), bad_at[2]) if bad_at is not None else None,
         contamination=_with_short_reason(evidence.contamination),

@@ -5,6 +5,8 @@
   whatever its size.
 * A growth factor carries four significant digits of its distance from one (seven decimals at
   most): 1.0204 as 1.020 would be wrong by two per cent in its logarithm.
+* Extremes of a field with bounds and values of histories carry eight digits, so that their distance
+  to a bound is known.
 * Wavelengths, shares and what only grades a mode or a line carry three digits: nothing hangs on the
   fourth, and there are many of them.
 * Steps, times, counts and sequence numbers are exact; the time per step carries six digits and
@@ -24,6 +26,7 @@ from monitor.growthlog.records import (
     Channel,
     Estimate,
     Evidence,
+    History,
     Line,
     Mode,
     Num,
@@ -77,10 +80,17 @@ def _dt(value: float) -> float:
     return significant(value, 6)
 
 
+def _extreme(value: float) -> float:
+    return significant(value, 8)
+
+
 # Rounding by place, where it is not four significant digits.
 _RULES: dict[tuple[type[msgspec.Struct], str], _Round] = {
     **{(Channel, name): _level for name in ("bulk", "ripple", "own", "floor", "vary", "top")},
     **{(Mode, name): factor for name in ("factor", "low", "high")},
+    **{(History, name): _level for name in ("level", "floor")},
+    **{(History, name): _extreme for name in ("value", "lo", "hi")},
+    **{(History, name): float for name in ("at", "time")},
     (Mode, "amp"): _level,
     **{(Mode, name): _coarse for name in ("residual", "share", "cells", "axes")},
     **{(Mode, name): _coarse for name in ("match", "gain", "foretold", "grown")},
@@ -93,6 +103,9 @@ _RULES: dict[tuple[type[msgspec.Struct], str], _Round] = {
     (Verdict, "factor"): factor,
 }
 
+# For channels with bounds, instead.
+_BOUNDED: dict[str, _Round] = {"lo": _extreme, "hi": _extreme}
+
 # What to do with a value that is not finite, by the type of its place.
 _Otherwise = Literal["spell", "leave out", "refuse"]
 _Place = tuple[str, _Round, _Otherwise]
@@ -104,7 +117,8 @@ class _NotFinite(Exception):
 
 
 def rounded(part: T) -> T:
-    """A copy of an evidence or a verdict, or of a part of one, with numbers as the log holds them.
+    """A copy of an evidence, a verdict, a history or a part of one, with numbers as the log has
+    them.
 
     Non-finite values are spelled where the schema allows it and left out where it allows None. Of
     a mode, line, worst tile or edge with any other non-finite number nothing is kept. Text that is
@@ -117,9 +131,10 @@ def _rounded(part: T, how: _Round | None) -> T:
     kind = type(part)
     if kind not in _places_of:
         _places_of[kind] = tuple(_place(kind, info) for info in msgspec.structs.fields(kind))
+    finer = _BOUNDED if isinstance(part, Channel) and part.bounded else {}
     return kind(
         **{
-            name: _value(getattr(part, name), how or rule, otherwise)
+            name: _value(getattr(part, name), how or finer.get(name, rule), otherwise)
             for name, rule, otherwise in _places_of[kind]
         }
     )

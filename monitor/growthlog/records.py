@@ -96,6 +96,8 @@ class Channel(
         "cells": "c",
         "vary": "v",
         "total": "sum",
+        "drift": "dr",
+        "bounded": "bd",
     },
 ):
     """One field's levels in one snapshot. Levels are natural logarithms of rms per cell (bulk) or
@@ -109,6 +111,9 @@ class Channel(
     cells: wavelength in cells of the ripple part of the difference (two-order ratio), pooled.
     vary: ln rms of the field's variation (deviation from its mean).
     top: ln of the largest number of the storage type, where that is not float64.
+    drift: change of a conserved field's total since the segment began, as a share of what it was
+        (of cells times rms where that nearly cancels).
+    bounded: the settings give bounds for it, so that it is the last to be cut from a long record.
     """
 
     f: str
@@ -123,6 +128,8 @@ class Channel(
     top: float | None = None
     bad: int = 0
     total: Num | None = None
+    drift: Num | None = None
+    bounded: bool = False
 
 
 class Mode(msgspec.Struct, frozen=True, array_like=True, gc=False):
@@ -189,6 +196,15 @@ class Worst(msgspec.Struct, frozen=True, array_like=True, gc=False):
     factor: float
 
 
+class HeardAlarm(msgspec.Struct, frozen=True, array_like=True, gc=False):
+    """A history declared an alarm that is past its own: its name, the words of its verdict, and the
+    interval in which its growth began."""
+
+    name: str
+    why: str
+    onset: tuple[int, int] | None = None
+
+
 class Evidence(
     msgspec.Struct,
     frozen=True,
@@ -208,6 +224,7 @@ class Evidence(
         "local": "lo",
         "where": "at",
         "limits": "lim",
+        "heard": "hd",
     },
 ):
     """Everything the decision may use, reduced from the sketches of one snapshot.
@@ -221,6 +238,7 @@ class Evidence(
     contamination, local: estimated share of the unstable part in the field's variation.
     fresh: snapshots in the window (2 needed for a difference).
     box: index box on the cells, from crops, of field and part named by `where`.
+    heard: histories (see `History`) that alarm at this snapshot.
     cut: entries left out so that the record stays short (`monitor.growthlog.fitting`).
     """
 
@@ -239,6 +257,7 @@ class Evidence(
     box: Box | None = None
     bad_at: tuple[str, str, tuple[int, ...]] | None = None
     limits: dict[str, float] = {}
+    heard: tuple[HeardAlarm, ...] = ()
     cut: int = 0
 
 
@@ -311,6 +330,37 @@ class Snapshot(
     mtime: float = 0.0
     record: int | None = None
     evidence: Evidence
+    verdict: Verdict
+
+
+class History(Record, frozen=True, kw_only=True, tag="history"):
+    """What a history (a number that the solver prints as it goes) has come to: at a change of its
+    condition, at every snapshot, and once a minute at most in between.
+
+    name: as in the settings. file: digits that identify the text file as it was begun; sample:
+    number of its last sample, from 0. step, time, value: of that sample; print: how it stands in
+    the file, where it is no usual number. count: samples since the record before; lo, hi: extremes
+    of the finite ones among them; bad: how many were not finite.
+    level, floor: natural logarithms of the rms change per step (per line without steps) over the
+    last four changes, and of what rounding in print makes of one.
+    verdict: as for a snapshot, of this history alone; field is its name, ruin counts until the
+    growing part is as large as the value, overflow until double precision ends.
+    """
+
+    name: str
+    file: str
+    sample: int
+    seg: int = 1
+    step: int | None = None
+    time: float | None = None
+    value: Num | None = None
+    print: str = ""
+    count: int = 0
+    lo: Num | None = None
+    hi: Num | None = None
+    bad: int = 0
+    level: float | None = None
+    floor: float | None = None
     verdict: Verdict
 
 
@@ -415,6 +465,7 @@ AnyRecord = (
     Opened
     | Segment
     | Snapshot
+    | History
     | Skipped
     | TileMap
     | CloseUp

@@ -16,7 +16,15 @@ from monitor.growthlog import fitting
 from monitor.growthlog.lock import Lock, LockLost
 from monitor.growthlog.numbers import rounded, significant
 from monitor.growthlog.plain import plain_json, with_valid_text
-from monitor.growthlog.records import AnyRecord, Evidence, Opened, Segment, Snapshot, TileMap
+from monitor.growthlog.records import (
+    AnyRecord,
+    Evidence,
+    History,
+    Opened,
+    Segment,
+    Snapshot,
+    TileMap,
+)
 from probes.errors import ReadError
 
 # Lines that wait in memory while the disk is full.
@@ -54,6 +62,8 @@ def encode(record: AnyRecord) -> bytes:
             mtime=round(record.mtime, 3),
             time=_finite(record.time),
         )
+    elif isinstance(record, History):
+        record = fitting.fit_history(rounded(record))
     elif isinstance(record, TileMap):
         low, high = (_finite(v) or 0.0 for v in (record.low, record.high))
         record = replace(record, low=significant(low), high=significant(high))

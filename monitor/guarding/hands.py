@@ -118,6 +118,20 @@ class Hands:
         if judged.changed:
             self._notify(record, judged.before)
 
+    def heard(
+        self, turn: Snapshot, before: Condition, *, count: int, live: bool, now: float
+    ) -> None:
+        """A history that is declared an alarm has come past it between two snapshots. turn: what
+        it says, in the shape of a snapshot's record."""
+        if not self._enabled:
+            return
+        if self._turn_segment != turn.seg:
+            self._turn_segment = turn.seg
+            self._pins.keep(turn, count)
+        if live:
+            self._stop(turn, now)
+        self._notify(turn, before)
+
     def advance(self, now: float) -> None:
         """Do what is due; never waits."""
         if not self._enabled:

@@ -17,6 +17,7 @@ from monitor.growthlog.records import (
     Channel,
     Condition,
     Evidence,
+    HeardAlarm,
     Segment,
     Skipped,
     Snapshot,
@@ -32,6 +33,7 @@ from monitor.guarding.masks import MaskMemory
 from monitor.guarding.pictures import closeup_values, map_values
 from monitor.guarding.resume import Resumed
 from monitor.guarding.sorting import Place
+from monitor.guarding.totals import First, Totals
 from monitor.measure import Measured, Measurer
 from probes.wire import Crop, Sketched
 
@@ -48,6 +50,8 @@ class _Memory(msgspec.Struct):
     index: int
     steps: tuple[int, ...]
     masked: dict[str, int]
+    totals: dict[str, First] = {}
+    begun: str = ""
 
 
 @dataclass(frozen=True, slots=True)
@@ -77,6 +81,8 @@ class Judge:
         self._state = condition.start()
         self._strides = Strides()
         self._masks = MaskMemory()
+        self._totals = Totals(settings.fields)
+        self._begun = ""
         self._index = 0
         self._number = resumed.segment.number if resumed.segment is not None else 0
         self._blocks: Blocks = resumed.segment.blocks if resumed.segment is not None else ()
@@ -106,6 +112,8 @@ class Judge:
             return self._begin_afresh("gap", f"what the last guard held is damaged ({error})")
         self._state, self._index = memory.state, memory.index
         self._strides, self._masks = Strides(memory.steps), MaskMemory(memory.masked)
+        self._totals = Totals(self._settings.fields, memory.totals)
+        self._begun = memory.begun
         self._why = ""
         return ""
 
@@ -127,20 +135,33 @@ class Judge:
         return self._number
 
     @property
+    def index(self) -> int:
+        """Snapshots judged in the segment."""
+        return self._index
+
+    @property
     def state(self) -> condition.State:
         return self._state
 
     def wanted_crops(self) -> tuple[Crop, ...]:
         return () if self.beginning else self._measurer.wanted_crops()
 
-    def other_shape(self, sketched: Sketched) -> bool:
-        """Whether these blocks are not those of the segment."""
-        return not self.beginning and Measurer.blocks(sketched) != self._blocks
+    def differs(self, sketched: Sketched) -> str:
+        """Why this cannot follow what the segment holds, "" if it can: "restart" where another
+        solver process tapped it, "shape" where its blocks are others."""
+        if self.beginning:
+            return ""
+        if sketched.begun != self._begun:
+            return "restart"
+        return "shape" if Measurer.blocks(sketched) != self._blocks else ""
 
     # --- judging ------------------------------------------------------------------------
 
-    def judge(self, sketched: Sketched) -> Judged:
-        """Measure, decide and record one snapshot, which follows the last one in step order."""
+    def judge(self, sketched: Sketched, heard: tuple[HeardAlarm, ...] = ()) -> Judged:
+        """Measure, decide and record one snapshot, which follows the last one in step order.
+
+        heard: histories that alarm there.
+        """
         arrival = sketched.arrival
         if self.beginning:
             self._begin(sketched)
@@ -151,7 +172,8 @@ class Judge:
         before = self._state.condition
         self._index += 1
         measured = self._measure(sketched)
-        evidence = as_logged(measured.evidence)
+        evidence = self._totals.told(measured.evidence, sketched.blocks)
+        evidence = as_logged(replace(evidence, heard=heard))
         self._state, verdict = self._decide(evidence, arrival.step)
         self._save(self._journal.next_seq)
         record = self._journal.write(
@@ -215,6 +237,8 @@ class Judge:
         self._measurer.new_segment()
         self._state = condition.start()
         self._strides, self._masks, self._index = Strides(), MaskMemory(), 0
+        self._totals = Totals(self._settings.fields)
+        self._begun = sketched.begun
         self._journal.write(
             Segment,
             sync=True,
@@ -238,7 +262,14 @@ class Judge:
         )
 
     def _save(self, seq: int) -> None:
-        memory = _Memory(self._state, self._index, self._strides.steps, self._masks.masked)
+        memory = _Memory(
+            self._state,
+            self._index,
+            self._strides.steps,
+            self._masks.masked,
+            self._totals.firsts,
+            self._begun,
+        )
         payload = {**self._measurer.dump(), "guard": msgspec.msgpack.encode(memory)}
         self._window.save(seq, payload)
         if self._window.failing:
@@ -281,7 +312,7 @@ def relative(path: str, folder: Path) -> str:
 # Settings that change nothing about sketch and measurement.
 _FREE = {
     "snapshots": {"poll_seconds", "stale_seconds", "settle_seconds", "pattern", "parts"},
-    "fields": {"min", "max", "growth_per_time", "spacing", "origin", "periodic"},
+    "fields": {"min", "max", "conserved", "growth_per_time", "spacing", "origin", "periodic"},
 }
 
 

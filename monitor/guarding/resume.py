@@ -10,6 +10,7 @@ from monitor.actions.stop import ACTS, Deed
 from monitor.growthlog.records import (
     AnyRecord,
     Condition,
+    History,
     Intent,
     Opened,
     Outcome,
@@ -32,7 +33,8 @@ class Resumed:
     known: content keys that are settled. total: snapshots in all segments. condition: of the last
     snapshot of this segment. changed: the last snapshot at which the condition changed, with the
     condition before. deeds: acts of this segment's stop, in order. notified: request ids of notices
-    that were begun. skipped: keys that were recorded as skipped, for whatever reason.
+    that were begun. skipped: keys that were recorded as skipped, for whatever reason. histories:
+    the last record of each. heard: one of them alarmed in this segment.
     """
 
     opened: Opened | None = None
@@ -47,6 +49,8 @@ class Resumed:
     deeds: list[Deed] = field(default_factory=list)
     notified: set[str] = field(default_factory=set)
     pulse: Pulse | None = None
+    histories: dict[str, History] = field(default_factory=dict)
+    heard: bool = False
     pins: PinHistory = field(default_factory=PinHistory)
     empty: bool = True
 
@@ -56,10 +60,13 @@ class Resumed:
         match record:
             case Snapshot():
                 self._snapshot(record)
+            case History():
+                self.histories[record.name] = record
+                self.heard |= record.verdict.alarmed
             case Segment():
                 self.segment, self.last, self.turn = record, None, None
                 self.condition, self.changed = "gathering", None
-                self.deeds = []
+                self.deeds, self.heard = [], False
             case Skipped():
                 self.skipped.add(record.key)
                 if record.reason in FINAL:

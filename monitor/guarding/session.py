@@ -19,6 +19,7 @@ from monitor.guarding.cadence import Spacing
 from monitor.guarding.ending import Ending
 from monitor.guarding.hands import Hands, Surroundings
 from monitor.guarding.heartbeat import Heartbeat
+from monitor.guarding.histories import Change, Histories
 from monitor.guarding.journal import Journal
 from monitor.guarding.judging import Judge, Judged, relative
 from monitor.guarding.limits import seconds_for
@@ -29,8 +30,9 @@ from monitor.guarding.signals import Interrupted, Signals
 from monitor.guarding.sorting import sort
 from monitor.guarding.telling import Teller
 from monitor.guarding.waiting import Reason, Skip, Waiting
+from monitor.lastclean import as_turn
 from monitor.wording import clean
-from probes.errors import ChildError
+from probes.errors import ChildError, ChildHung
 from probes.wire import Arrival, Failed, Look, Looked, Pending, Reply, Request, Sketched
 
 # Longest and shortest wait for something new, seconds; in between a quarter of the usual spacing.
@@ -45,6 +47,8 @@ TROUBLE_PAUSE = 2.0
 # At the end files may still be settling: on local disks, and where attributes are cached.
 SETTLING_LOCAL = 5.0
 SETTLING_FAR = 130.0
+# Histories are looked at so often.
+HISTORY_LOOK = 1.0
 # A snapshot that was written so short ago tells that the run is at work.
 FRESH = 60.0
 # Notices that are under way when guard ends get this long, and after a signal this long.
@@ -67,9 +71,10 @@ class Asking:
     def __init__(self, keeper: ChildKeeper, signals: Signals, heart: Heartbeat, lock: Lock) -> None:
         self._keeper, self.signals, self._heart, self._lock = keeper, signals, heart, lock
         self._held_until = 0.0
+        keeper.meanwhile = signals.hurry
 
     def ask(self, request: Request, limit_s: float) -> Reply:
-        """Ask and wait for the reply, come what may."""
+        """Ask and wait for the reply, also for some seconds after a signal; then Interrupted."""
         # A reading process that hangs is killed and a new one started, which takes a little.
         self._heart.beat(limit_s + 60.0)
         reply = self._keeper.ask(request, limit_s)
@@ -128,9 +133,15 @@ class Session:
         self._reading = Reading(asking.ask_freely)
         self._waiting = Waiting(resumed.skipped)
         around = Surroundings(folder, log, mode.run, process, lambda: self._spacing.usual or 0.0)
+        self._histories = Histories(settings, asking.ask_freely, journal, clock, resumed.histories)
         self._hands = Hands(settings, asking.ask, journal, around, resumed, enabled=mode.actions)
-        self._alarmed = resumed.turn is not None
-        self._overflowed = resumed.condition == "overflowed"
+        # The worst exit status that conditions call for: what this guard saw, and while a segment
+        # of an earlier one goes on, what that saw in it.
+        self._worst = 0
+        self._inherited = _called_for(
+            alarmed=resumed.turn is not None or resumed.heard,
+            overflowed=resumed.condition == "overflowed",
+        )
         self._pending: tuple[Pending, ...] = ()
         self._wakeup = ""
         self._caught_up = False
@@ -175,11 +186,13 @@ class Session:
                 return why
             if not arrivals:
                 self._caught_up = True
+                self._hear(self._histories.onward(self._judge.number))
             elif not progress:
                 self._asking.pause(SHORTEST_LOOK)
 
     def _catch_up(self) -> str:
         self._drain()
+        self._hear_the_rest()
         while self._hands.busy:
             # A stop that the catch-up called for is seen through.
             self._take(self._look(BUSY_LOOK))
@@ -211,6 +224,7 @@ class Session:
     def _finish(self, why: str) -> None:
         """The run has ended: take what it wrote last, and say so."""
         self._drain()
+        self._hear_the_rest()
         self._report_pending(at_end=True)
         self._hands.ended(clean(why))
         if self._pulse.pulse != "finished":
@@ -241,11 +255,15 @@ class Session:
 
     def _wait(self) -> float:
         """How long to wait for something new."""
+        if self._caught_up and self._histories.more:
+            return 0.0
         if self._hands.busy:
             return BUSY_LOOK
         longest = self._settings.snapshots.poll_seconds or LONGEST_LOOK
         if self._process is not None or self._ending.declared:
             longest = min(longest, PROCESS_LOOK)
+        if len(self._histories):
+            longest = min(longest, HISTORY_LOOK)
         usual = self._spacing.usual
         return min(longest, max(SHORTEST_LOOK, (usual if usual is not None else 2.0) / 4.0))
 
@@ -254,7 +272,10 @@ class Session:
         try:
             reply = self._asking.ask_freely(Look(wait_s=wait_s), wait_s + seconds_for(0))
         except ChildError as error:
-            self._journal.trouble(f"looking for snapshots: {error}", once=True)
+            # Looking hardly reads anything: what takes so long is the file system.
+            hung = isinstance(error, ChildHung)
+            why = f"file system not answering ({error})" if hung else str(error)
+            self._journal.trouble(f"looking for snapshots: {why}", once=True)
             self._asking.pause(TROUBLE_PAUSE)
             return ()
         if not isinstance(reply, Looked):
@@ -310,8 +331,8 @@ class Session:
                 return True
             if self._judge.beginning and not began:
                 sketched = self._read(arrival, behind=behind)
-        if sketched is not None and self._judge.other_shape(sketched):
-            self._judge.restart("shape")
+        if sketched is not None and (why := self._judge.differs(sketched)):
+            self._judge.restart(why)
             sketched = self._read(arrival, behind=behind)
         if sketched is None:
             return arrival.key in self._known
@@ -338,7 +359,8 @@ class Session:
 
     def _judge_one(self, sketched: Sketched, *, behind: bool) -> None:
         arrival = sketched.arrival
-        judged = self._judge.judge(sketched)
+        self._hear(self._histories.up_to(arrival.step, arrival.time, self._judge.number))
+        judged = self._judge.judge(sketched, self._histories.alarms())
         self._known.add(arrival.key)
         self._asking.settled(arrival.key)
         now = self._clock()
@@ -357,22 +379,45 @@ class Session:
             arrival,
             sketched,
             count=self._judge.count,
-            live=self._is_live(judged),
+            live=self._is_at_work(judged.record.mtime),
             behind=behind,
             now=now,
         )
 
-    def _is_live(self, judged: Judged) -> bool:
-        """Whether this snapshot shows that the run is at work now, not that it was once."""
+    def _is_at_work(self, written: float) -> bool:
+        """Whether something written then shows that the run is at work now, not that it was."""
         if self._process is not None:
             return self._process.alive()
         fresh = max(FRESH, 5.0 * (self._spacing.usual or 0.0))
-        return self._caught_up or self._clock() - judged.record.mtime < fresh
+        return self._caught_up or self._clock() - written < fresh
+
+    def _hear_the_rest(self) -> None:
+        """What the histories have beyond the last snapshot."""
+        self._hear(self._histories.onward(self._judge.number))
+        while self._histories.more:
+            self._hear(self._histories.onward(self._judge.number))
+
+    def _hear(self, changes: list[Change]) -> None:
+        """Tell of histories whose condition has changed, and act upon those declared an alarm."""
+        for change in changes:
+            record, verdict = change.record, change.record.verdict
+            why = f": {verdict.why}" if verdict.why else ""
+            self._teller.news(f"history {record.name} {verdict.condition}{why}")
+            if not verdict.alarmed or verdict.condition not in ("runaway", "overflowed"):
+                continue
+            self._worst = max(self._worst, _called_for(alarmed=True))
+            path = self._settings.histories[record.name].path
+            turn = as_turn(record, path, self._judge.index + 1)
+            live, now = self._is_at_work(change.mtime), self._clock()
+            self._hands.heard(turn, change.before, count=self._judge.count, live=live, now=now)
 
     def _remember(self, judged: Judged) -> None:
-        verdict = judged.record.verdict
-        self._alarmed |= verdict.alarmed
-        self._overflowed |= verdict.condition == "overflowed"
+        record = judged.record
+        if record.index == 1:
+            self._inherited = 0
+        overflowed = record.verdict.condition == "overflowed"
+        called = _called_for(alarmed=record.verdict.alarmed, overflowed=overflowed)
+        self._worst = max(self._worst, called)
 
     # --- records ------------------------------------------------------------------------
 
@@ -422,6 +467,9 @@ class Session:
         """A failed action comes first, since nothing else tells of it; then the worst condition."""
         if self._hands.failed:
             return Exit.ACTION_FAILED
-        if self._overflowed:
-            return Exit.OVERFLOWED
-        return Exit.ALARM if self._alarmed else otherwise
+        return max(self._worst, self._inherited) or otherwise
+
+
+def _called_for(*, alarmed: bool, overflowed: bool = False) -> int:
+    """The exit status of a condition; the worse the greater."""
+    return Exit.OVERFLOWED if overflowed else Exit.ALARM if alarmed else 0

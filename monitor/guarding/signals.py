@@ -3,16 +3,20 @@
 from __future__ import annotations
 
 import signal
+import time
 from collections.abc import Iterator
 from contextlib import contextmanager
 from types import FrameType
 from typing import Any, Self
 
 ENDING = (signal.SIGINT, signal.SIGTERM, signal.SIGHUP)
+# What must not be cut off without need gets so long after a signal, in seconds: batch systems kill
+# half a minute after it.
+LONGEST_FINISH = 10.0
 
 
 class Interrupted(Exception):
-    """A signal to end came while guard was only waiting or reading."""
+    """A signal to end came while guard was only waiting or reading, or some time ago."""
 
 
 class Signals:
@@ -25,6 +29,7 @@ class Signals:
 
     def __init__(self) -> None:
         self.caught: int | None = None
+        self._when = 0.0
         self._open = False
         self._before: dict[signal.Signals, Any] = {}
 
@@ -49,9 +54,17 @@ class Signals:
         finally:
             self._open = False
 
+    def hurry(self) -> None:
+        """To be called while something is under way outside `interruptible`: raises Interrupted
+        `LONGEST_FINISH` seconds after a signal."""
+        if self.caught is not None and time.monotonic() - self._when >= LONGEST_FINISH:
+            raise Interrupted
+
     def _note(self, number: int, frame: FrameType | None) -> None:
         signal.signal(number, signal.SIG_DFL)
         first, self.caught = self.caught is None, self.caught or number
+        if first:
+            self._when = time.monotonic()
         if first and self._open:
             self._open = False
             raise Interrupted

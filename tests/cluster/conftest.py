@@ -1,5 +1,5 @@
 """The services are started once. Where they cannot be, the tests fail: who asks for them by
-`-m cluster` wants them run."""
+`-m cluster` wants them run. Only a kernel that forbids the blind mount is a reason to skip."""
 
 from __future__ import annotations
 
@@ -9,7 +9,9 @@ from pathlib import Path
 
 import pytest
 
-from tests.cluster.services import Slurm, Sshd
+from tests.cluster.services.blindmount import BlindMount, Forbidden
+from tests.cluster.services.slurm import Slurm
+from tests.cluster.services.sshd import Sshd
 
 
 @pytest.fixture(scope="session")
@@ -22,8 +24,27 @@ def sshd() -> Iterator[Sshd]:
 
 
 @pytest.fixture(scope="session")
-def slurm() -> Iterator[Slurm]:
+def cluster() -> Iterator[Slurm]:
     with tempfile.TemporaryDirectory(prefix="slurm") as folder:
-        cluster = Slurm(Path(folder))
-        yield cluster
-        cluster.close()
+        started = Slurm(Path(folder))
+        yield started
+        started.close()
+
+
+@pytest.fixture
+def slurm(cluster: Slurm) -> Iterator[Slurm]:
+    """The same Slurm for every test, with an empty queue."""
+    yield cluster
+    cluster.clear()
+
+
+@pytest.fixture
+def mount(tmp_path: Path) -> Iterator[BlindMount]:
+    folder = tmp_path / "fs"
+    folder.mkdir()
+    try:
+        mounted = BlindMount(folder)
+    except Forbidden as error:
+        pytest.skip(f"the kernel forbids file systems in user space: {error}")
+    yield mounted
+    mounted.close()

@@ -1,129 +1,162 @@
-"""The README's job script in a real Slurm: alarm, stop, HOLD, chains, requeueing, cancelling."""
+"""The README's job script in a real Slurm: alarm, stop, HOLD, chains, requeueing, cancelling.
+
+What Slurm promises of signals, states and requeueing: the manual pages of sbatch (--signal,
+--requeue), scancel and scontrol, from memory.
+"""
 
 from __future__ import annotations
 
-import re
-import sys
 from pathlib import Path
 
 import pytest
 
-from demo_runs import settings_text
 from monitor.growthlog.read import read_log
-from monitor.growthlog.records import Closed, Opened, Outcome, Segment, Snapshot
+from monitor.growthlog.records import Closed, Intent, Opened, Outcome, Segment, Snapshot
 from monitor.review import summarise
-from tests.cluster.services import Slurm, wait_until
-from tests.source_tree import ROOT
+from tests.cluster.jobs import HEALTHY, UNSTABLE, Job
+from tests.cluster.services.processes import wait_until
+from tests.cluster.services.slurm import Slurm
 
 pytestmark = pytest.mark.cluster
 
-# As long as this a healthy job goes on, which a test ends before.
-_LONG = 100_000
-
-
-def readme_script() -> str:
-    """The job script that the README shows."""
-    readme = (ROOT / "README.md").read_text(encoding="utf-8")
-    return next(b for b in re.findall(r"```sh\n(.*?)```", readme, re.DOTALL) if "#SBATCH" in b)
-
-
-class Job:
-    """A folder with the README's script, settings, and a solver that only the first task runs."""
-
-    def __init__(
-        self, folder: Path, slurm: Slurm, factor: float, steps: int, stop: str = ""
-    ) -> None:
-        self.folder, self.slurm = folder, slurm
-        self.script = folder / "job.sh"
-        self.script.write_text(readme_script())
-        settings = settings_text("plate", "out")
-        if stop:
-            settings = settings[: settings.index("[[stop]]")] + stop
-        (folder / "stepwarden.toml").write_text(settings)
-        solver = folder / "solver"
-        solver.write_text(
-            '#!/bin/sh\n[ "${SLURM_PROCID:-0}" = 0 ] || exit 0\n'
-            f"exec {sys.executable} -m demo_runs.plate --out out --pace 0.05 --step-factor "
-            f"{factor} --steps {steps} $(test -e again && echo --restart out/T_0000070.npy)\n"
-        )
-        solver.chmod(0o755)
-
-    def submit(self) -> str:
-        return self.slurm.submit(self.script, "--time=5")
-
-    def records(self) -> list[object]:
-        log = self.folder / "growth.jsonl"
-        return list(read_log(log).records) if log.exists() else []
-
-    def of(self, kind: type) -> list:  # type: ignore[type-arg]
-        return [r for r in self.records() if isinstance(r, kind)]
-
 
 def test_an_unstable_job_is_stopped_and_held(slurm: Slurm, tmp_path: Path) -> None:
-    """Alarm while clean, a checkpoint kept, the solver stopped by its stop file; the chain ends at
-    the HOLD file, and a job that somebody submits all the same does nothing but show it."""
-    job = Job(tmp_path, slurm, 1.02, 4000)
-    job.submit()
+    """Alarm while clean, a checkpoint kept, the solver stopped by its stop file, and the chain ends
+    there: no second job is submitted, and the first, requeued by hand, only shows the HOLD file."""
+    job = Job(tmp_path, slurm)
+    job.solver(UNSTABLE)
+    number = job.submit()
     slurm.wait_for_end(90)
-    review = summarise(read_log(tmp_path / "growth.jsonl"))
+    assert slurm.state(number) == "COMPLETED"
+    review = summarise(read_log(job.log))
     assert review.alarmed
     assert review.clean is not None
     assert review.clean.pinned
     assert any(r.act == "stop-file" and r.outcome == "accepted" for r in job.of(Outcome))
     assert job.of(Closed)[-1].status == 10
-    assert (tmp_path / "HOLD").is_file()
-    before = len(job.of(Snapshot))
+    assert job.held
+    before = job.log.read_bytes()
+    slurm.ask("scontrol", "requeue", number)
+    hold = (tmp_path / "HOLD").read_text()
+    # The output file is begun anew by a job that runs again.
+    wait_until(lambda: job.said(number) == hold, 60, "HOLD is shown")
+    slurm.wait_for_end(30)
+    assert job.log.read_bytes() == before
+    assert [p.name for p in tmp_path.glob("slurm-*.out")] == [f"slurm-{number}.out"]
+
+
+def test_a_resubmitted_job_honours_hold(slurm: Slurm, tmp_path: Path) -> None:
+    """Somebody submits the held run again: neither solver nor guard starts."""
+    job = Job(tmp_path, slurm)
+    job.solver(HEALTHY)
+    (tmp_path / "HOLD").write_text("Why: grew\n")
     number = job.submit()
     slurm.wait_for_end(30)
-    said = (tmp_path / f"slurm-{number}.out").read_text()
-    assert (tmp_path / "HOLD").read_text().strip() in said
-    assert len(job.of(Snapshot)) == before
-    assert len(list(tmp_path.glob("slurm-*.out"))) == 2
+    assert job.said(number) == "Why: grew\n"
+    assert slurm.state(number) == "COMPLETED"
+    assert not job.log.exists()
+    assert not (tmp_path / "out").exists()
 
 
-def test_a_stop_by_the_batch_system(slurm: Slurm, tmp_path: Path) -> None:
-    """A rung that signals the job step by the job's own number, as an argument list."""
-    stop = (
-        '[[stop]]\ndo = "command"\nwait_seconds = 20\n'
-        'command = ["sh", "-c", "exec scancel --signal=TERM $SLURM_JOB_ID.0"]\n'
-    )
-    job = Job(tmp_path, slurm, 1.02, 4000, stop)
-    job.submit()
+def by_command(line: str, wait: int = 20) -> str:
+    """A stop section that has a shell run `line`, in which the job's number is a variable."""
+    return f'[[stop]]\ndo = "command"\nwait_seconds = {wait}\ncommand = ["sh", "-c", "{line}"]\n'
+
+
+def test_a_stop_by_signalling_the_step(slurm: Slurm, tmp_path: Path) -> None:
+    """Only the solver's step is told to end: guard sees it end, and closes with the alarm."""
+    job = Job(tmp_path, slurm, stop=by_command("exec scancel --signal=TERM $SLURM_JOB_ID.0"))
+    job.solver(UNSTABLE)
+    number = job.submit()
     slurm.wait_for_end(90)
+    assert slurm.state(number) == "COMPLETED"
     told = [(r.act, r.outcome) for r in job.of(Outcome)]
     assert ("command", "accepted") in told
     assert job.of(Closed)[-1].status == 10
-    assert (tmp_path / "HOLD").is_file()
+    assert job.held
 
 
-def test_a_job_that_is_cancelled(slurm: Slurm, tmp_path: Path) -> None:
-    """The batch system's TERM ends guard with a closing record, status 143; nothing is held."""
-    job = Job(tmp_path, slurm, 0.9, _LONG)
+def test_a_stop_by_cancelling_the_job_and_a_mended_run(slurm: Slurm, tmp_path: Path) -> None:
+    """The README's command ends the whole job with guard in it, which still pins, holds and closes
+    with the alarm. Restarted with a smaller step from the checkpoint that the review names, with
+    HOLD removed, the run goes on: what was left of the stop is not done to it."""
+    twice = 2 * by_command("exec scancel $SLURM_JOB_ID", wait=3)
+    job = Job(tmp_path, slurm, stop=twice)
+    job.solver(UNSTABLE)
     number = job.submit()
-    wait_until(lambda: len(job.of(Snapshot)) >= 6, 60, "six snapshots judged")
-    slurm.ask("scancel", "--full", "--signal=TERM", number)
-    slurm.ask("scancel", number)
+    slurm.wait_for_end(90)
+    assert slurm.state(number) == "CANCELLED"
+    assert job.of(Closed)[-1].status == 10
+    assert job.held
+    clean = summarise(read_log(job.log)).clean
+    assert clean is not None
+    assert clean.pinned
+    (tmp_path / "HOLD").unlink()
+    job.solver(HEALTHY, restart=clean.path)
+    deeds = len(job.of(Intent))
+    again = job.submit()
+    job.judged(8, segment=2)
+    assert slurm.state(again) == "RUNNING"
+    assert [r.act for r in job.of(Intent)[deeds:] if r.act != "pin"] == []
+    assert not any(s.verdict.alarmed for s in job.of(Snapshot) if s.seg == 2)
+    assert not job.held
+
+
+def test_a_chain_of_jobs_until_it_is_cancelled(slurm: Slurm, tmp_path: Path) -> None:
+    """Slurm's signal before the time limit reaches the script: the solver ends cleanly, guard
+    closes with 0 and the next job is submitted. That one is cancelled: guard closes with 143 before
+    the job is gone, and nothing is submitted any more."""
+    job = Job(tmp_path, slurm)
+    job.solver(HEALTHY)
+    first = job.submit("--time=1", "--signal=B:USR1@50")
+    job.judged(4)
+    wait_until(lambda: first not in slurm.jobs(), 90, "the first job ended")
+    assert slurm.state(first) == "COMPLETED"
+    (closed,) = job.of(Closed)
+    assert (closed.status, closed.why) == (0, "run-ended is there")
+    (second,) = slurm.jobs()
+    job.judged(4, segment=2)
+    slurm.ask("scancel", second)
     slurm.wait_for_end(30)
-    wait_until(lambda: bool(job.of(Closed)), 10, "guard closes its log")
-    assert job.of(Closed)[-1].status == 143
-    assert not (tmp_path / "HOLD").exists()
+    assert slurm.state(second) == "CANCELLED"
+    assert [c.status for c in job.of(Closed)] == [0, 143]
+    assert not (tmp_path / "growth.jsonl.lock").exists()
+    assert not job.held
+
+
+def test_a_job_at_its_time_limit(slurm: Slurm, tmp_path: Path) -> None:
+    """A solver that was not told in time is ended by Slurm, and guard with it: 143, no successor,
+    nothing held."""
+    job = Job(tmp_path, slurm)
+    job.solver(HEALTHY)
+    number = job.submit("--signal=B:CONT@60")
+    job.judged(4)
+    slurm.ask("scontrol", "update", f"JobId={number}", "EndTime=now+2")
+    slurm.wait_for_end(90)
+    assert slurm.state(number) == "TIMEOUT"
+    assert [c.status for c in job.of(Closed)] == [143]
+    assert not job.held
 
 
 def test_a_requeued_job_goes_on_in_the_same_log(slurm: Slurm, tmp_path: Path) -> None:
-    """The script runs again in the same folder from an earlier step: one log, a new segment, no
-    snapshot recorded twice within one."""
-    job = Job(tmp_path, slurm, 0.9, _LONG)
+    """The script runs again in the same folder from an earlier step: one log, a new segment, and no
+    snapshot is recorded twice."""
+    job = Job(tmp_path, slurm)
+    job.solver(HEALTHY)
     number = job.submit()
-    wait_until(lambda: len(job.of(Snapshot)) >= 8, 60, "eight snapshots judged")
-    (tmp_path / "again").touch()
+    job.judged(8)
+    job.solver(HEALTHY, restart="out/T_0000070.npy")
     slurm.ask("scontrol", "requeue", number)
-    wait_until(lambda: len(job.of(Segment)) >= 2, 60, "a second segment")
-    wait_until(lambda: len([s for s in job.of(Snapshot) if s.seg == 2]) >= 3, 60, "goes on there")
+    job.judged(3, segment=2)
+    assert slurm.jobs() == [number]
     slurm.ask("scancel", number)
     slurm.wait_for_end(30)
     assert [s.why for s in job.of(Segment)] == ["start", "restart"]
+    assert [c.status for c in job.of(Closed)] == [143, 143]
     assert len(job.of(Opened)) == 2
-    for segment in (1, 2):
-        steps = [s.step for s in job.of(Snapshot) if s.seg == segment]
-        assert steps == sorted(set(steps))
-    assert not any(s.verdict.alarmed for s in job.of(Snapshot))
+    snapshots = job.of(Snapshot)
+    assert len({s.key for s in snapshots}) == len(snapshots)
+    for segment, first in ((1, 0), (2, 105)):
+        steps = [s.step for s in snapshots if s.seg == segment]
+        assert steps == list(range(first, first + 35 * len(steps), 35))
+    assert not any(s.verdict.alarmed for s in snapshots)

@@ -10,7 +10,8 @@ from pathlib import Path
 import psutil
 import pytest
 
-from tests.cluster.services import Sshd, quietly, wait_until
+from tests.cluster.services.processes import quietly, wait_until
+from tests.cluster.services.sshd import Sshd
 from tests.monitor.desk.made_runs import runaway, write
 from tests.monitor.desk.terminal import Terminal
 
@@ -67,13 +68,17 @@ def test_a_review_through_a_pipe(sshd: Sshd, folder: Path) -> None:
 
 
 def test_a_plain_desk_through_a_pipe(sshd: Sshd, folder: Path) -> None:
-    """Lines of text, no control sequences; it ends when its reader goes."""
+    """Lines of text with the condition in them and no control sequence; when the line drops the
+    desk ends on the far side too."""
     words = sshd.ssh("stepwarden", "desk", "--plain", str(folder))
     with subprocess.Popen(words, stdin=subprocess.DEVNULL, stdout=subprocess.PIPE) as process:
         assert process.stdout is not None
-        first = process.stdout.readline().decode()
-        assert first.isprintable() or first.endswith("\n")
-        assert "\x1b" not in first
+        line = ""
+        while "runaway" not in line:
+            line = process.stdout.readline().decode()
+            assert line.endswith("\n")
+            assert line[:-1].isprintable()
+        assert len(desks(folder)) == 1
         process.kill()
     wait_until(lambda: not desks(folder), 15, "no desk is left")
 

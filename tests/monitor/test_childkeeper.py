@@ -18,7 +18,7 @@ import pytest
 import probes
 from monitor import childkeeper
 from monitor.childkeeper import ChildKeeper
-from probes.errors import ChildError
+from probes.errors import ChildError, ChildHung
 from probes.spec import SketchSpec, SnapshotSpec, WatchSpec
 from probes.wire import (
     Arrival,
@@ -153,7 +153,7 @@ def test_hanging_read_ends_itself(tmp_path: Path, keep: Callable[..., ChildKeepe
     arrivals(keeper)
     hung = pid(keeper)
     began = time.monotonic()
-    with pytest.raises(ChildError, match="took too long"):
+    with pytest.raises(ChildHung, match="took too long"):
         keeper.ask(ReadSnapshot(arrival=hanging), 0.5)
     assert time.monotonic() - began < 0.5 + childkeeper.GRACE
     assert gone(hung)
@@ -169,9 +169,31 @@ def test_frozen_process_is_killed(
     arrivals(keeper)
     frozen = pid(keeper)
     os.kill(frozen, signal.SIGSTOP)
-    with pytest.raises(ChildError, match="no answer"):
+    with pytest.raises(ChildHung, match="no answer"):
         keeper.ask(Look(), 0.3)
     assert gone(frozen)
+    assert arrivals(keeper) == ()
+
+
+def test_whoever_waits_may_give_up(keep: Callable[..., ChildKeeper]) -> None:
+    """What `meanwhile` raises ends the waiting long before the time limit, and the process that did
+    not answer; the next request starts a new one."""
+
+    class Enough(Exception):
+        pass
+
+    def enough() -> None:
+        raise Enough
+
+    keeper = keep("h_{step}.npy")
+    arrivals(keeper)
+    frozen = pid(keeper)
+    os.kill(frozen, signal.SIGSTOP)
+    keeper.meanwhile = enough
+    with pytest.raises(Enough):
+        keeper.ask(Look(), 10 * PATIENCE)
+    assert gone(frozen)
+    keeper.meanwhile = lambda: None
     assert arrivals(keeper) == ()
 
 

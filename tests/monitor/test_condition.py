@@ -9,7 +9,7 @@ import pytest
 
 from monitor import condition
 from monitor.config import AlarmSection
-from monitor.growthlog.records import Channel, Estimate, Evidence, Mode, Verdict
+from monitor.growthlog.records import Channel, Estimate, Evidence, HeardAlarm, Mode, Verdict
 from probes.spec import FieldSpec
 
 ALARM = AlarmSection()
@@ -275,3 +275,16 @@ def test_an_alternating_mode_beside_a_resolved_growth_alarms() -> None:
     assert not fold([*before, last])[-1].alarmed
     odd = msgspec.structs.replace(last, modes=(mode(re=-1.22, odd=True, factor=1.02),))
     assert fold([*before, odd])[-1].alarmed
+
+
+def test_a_history_that_alarms() -> None:
+    """What the settings declare an alarm is one for the run, in the history's words and with its
+    onset; what the fields show themselves is told first."""
+    heard = HeardAlarm("energy", "energy: its changes grew", (40, 60))
+    quiet = msgspec.structs.replace(level([-30.0])[0], heard=(heard,))
+    verdict = fold([*level([-30.0] * 6), quiet])[-1]
+    assert (verdict.condition, verdict.kind, verdict.alarmed) == ("runaway", "numerical", True)
+    assert (verdict.field, verdict.onset) == ("energy", (40, 60))
+    assert verdict.why == "history energy: its changes grew"
+    both = [msgspec.structs.replace(e, heard=(heard,)) for e in level(rise(0.3, 30))]
+    assert fold(both)[-1].field == "h"

@@ -24,7 +24,7 @@ from monitor.config import (
 from monitor.settings_rules import BOUNDS, FREE, Bounds
 from probes.errors import SettingsError
 from probes.limits.spec import SchemeSpec, TermSpec
-from probes.spec import FieldSpec, RawSpec, SnapshotSpec
+from probes.spec import FieldSpec, HistorySpec, RawSpec, SnapshotSpec
 
 WHOLE = """
 [run]
@@ -300,6 +300,19 @@ def test_without_snapshots_the_rest_is_judged_all_the_same(tmp_path: Path) -> No
         ("fields.u", "spacing = 1.0", "must be a list of numbers, not 1.0"),
         ("fields.u", "min = 2\nmax = 2", "must be less than max, but 2 is not less than 2"),
         ("fields.u", "spacing = [1, 1]\norigin = [0]", "on the number of axes: spacing 2"),
+        ("histories.e", "column = 3", "[histories.e] path: must be given"),
+        ("histories.e", 'path = ""\ncolumn = 3', "must name a text file"),
+        ("histories.e", 'path = "a"', 'must say which number of a line is meant; write for'),
+        ("histories.e", 'path = "a"\ncolumn = 0', "columns are counted from 1, not 0"),
+        ("histories.e", 'path = "a"\ncolumn = 1\nstep = 1.5', "text in quotes or a whole number"),
+        ("histories.e", 'path = "a"\npattern = "("', '"(" is no regular expression: '),
+        ("histories.e", 'path = "a"\npattern = "x"', "has no group named value; write for example"),
+        ("histories.e", "path = 'a'\npattern = ['(?P<value>.)', '(?P<steps>.)']", "mean 'step'?"),
+        ("histories.e", "path = 'a'\npattern = '(?P<value>.)'\nstep = 1", "beside a pattern"),
+        ("histories.e", 'path = "a"\ncolumn = 1\nmin = 1\nmax = 0', "must be less than max"),
+        ("histories.e", 'path = "a"\ncolumn = 1\nstep_factor = 0', "must be 1 or more, not 0"),
+        ("histories.e", 'path = "a"\ncolumn = 1\nalarm = 1', "must be true or false, not 1"),
+        ("histories", "e = 1", "must be a section of keys, not 1"),
         ("fields.'v[1]'", "scale = 1", "share its settings; write [fields.v]"),
         ("fields.u", 'components = "frist"', 'did you mean "first"?'),
         ("run", "idle_seconds = -1", "must be 0 or more"),
@@ -456,7 +469,7 @@ def test_any_tables_give_settings_or_a_report(tables: dict[str, Any]) -> None:
 
 def sections() -> dict[str, type[msgspec.Struct]]:
     found = {f.name: f.type for f in msgspec.structs.fields(Settings)}
-    own = {"fields": FieldSpec, "stop": StopStep, "raw": RawSpec}
+    own = {"fields": FieldSpec, "histories": HistorySpec, "stop": StopStep, "raw": RawSpec}
     return found | own | {"scheme": SchemeSpec, "terms": TermSpec}
 
 

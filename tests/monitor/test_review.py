@@ -9,13 +9,16 @@ from msgspec.structs import replace
 
 from monitor.growthlog.records import (
     Closed,
+    Condition,
     Estimate,
+    History,
     Intent,
     Outcome,
     PinRecord,
     PulseChange,
     Remark,
     Skipped,
+    Verdict,
     Worst,
 )
 from monitor.review import best_growth, deeds, summarise
@@ -302,3 +305,55 @@ def test_an_interval_without_an_upper_end_is_no_interval() -> None:
     made = summarise(contents([opened(1), segment(2), snap(3), alarm])).json_object()
     assert made["growth_interval"] is None
     assert made["growth_per_step"] == 1.02
+
+
+def heard(seq: int, step: int, condition: Condition, **verdict: object) -> History:
+    return History(
+        seq=seq,
+        at=100.0 + seq,
+        name="energy",
+        file="f",
+        sample=step,
+        step=step,
+        value=5.0,
+        verdict=Verdict(condition=condition, field="energy", **verdict),  # type: ignore[arg-type]
+    )
+
+
+def test_an_alarm_of_a_history_alone() -> None:
+    """A run that was stopped between two snapshots: alarmed, with the history's words, and what was
+    written before its growth began is clean."""
+    records = [opened(1), segment(2), *(snap(n) for n in range(3, 20))]
+    why = "energy: its changes grew"
+    records += [
+        heard(20, 390, "quiet"),
+        heard(21, 395, "runaway", alarmed=True, kind="numerical", why=why, onset=(250, 300)),
+        heard(22, 400, "quiet", alarmed=True),
+    ]
+    review = summarise(contents(records))
+    assert review.alarmed
+    assert review.turn is None
+    assert review.clean is not None
+    assert review.clean.step == 240
+    told = " ".join(review.text().split())
+    assert "alarm of the history energy alone" in told
+    assert "first alarm: energy 5 at step 395, runaway: its changes grew" in told
+    assert "no alarm is no proof" not in told
+    (made,) = review.json_object()["histories"]
+    assert (made["name"], made["step"], made["condition"], made["alarmed"]) == (
+        "energy",
+        400,
+        "quiet",
+        True,
+    )
+
+
+def test_a_history_that_is_only_told() -> None:
+    """No alarm, and every checkpoint is as clean as without it."""
+    records = [opened(1), segment(2), *(snap(n) for n in range(3, 20))]
+    records += [heard(20, 390, "swelling", why="energy: its changes grew")]
+    review = summarise(contents(records))
+    assert not review.alarmed
+    assert review.clean is not None
+    assert review.clean.step == 380
+    assert "energy 5 at step 390, swelling" in " ".join(review.text().split())

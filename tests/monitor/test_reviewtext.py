@@ -2,7 +2,15 @@
 
 from __future__ import annotations
 
-from monitor.growthlog.records import AnyRecord, Intent, Outcome, PinRecord, Skipped
+from monitor.growthlog.records import (
+    AnyRecord,
+    Channel,
+    Evidence,
+    Intent,
+    Outcome,
+    PinRecord,
+    Skipped,
+)
 from monitor.review import summarise
 from monitor.reviewtext import WIDTH
 from tests.monitor.made_log import alarmed_run, contents, opened, segment, snap
@@ -94,3 +102,15 @@ def test_many_skipped_snapshots_are_counted() -> None:
     told = text_of([*alarmed_run(), *skips])
     assert told.count("cut short") == 5
     assert "and 4 more" in told
+
+
+def test_drifts_of_totals_are_told() -> None:
+    """A conserved field's drift, with its sign, in the text and in the object; else no row."""
+    of_h = Channel(f="h", lo=0.0, hi=1.0, drift=-1.23e-6)
+    odd = Channel(f="u[1]", lo=0.0, hi=1.0, drift="nan")
+    records = [opened(1), segment(2)]
+    records += [snap(n, evidence_=Evidence(channels=(of_h, odd))) for n in range(3, 9)]
+    review = summarise(contents(records))
+    assert "total of h -1.2e-6, of u[1] NaN" in " ".join(review.text().split())
+    assert review.json_object()["drift_of_totals"] == {"h": -1.23e-6, "u[1]": "nan"}
+    assert "Totals" not in text_of([opened(1), segment(2), snap(3)])

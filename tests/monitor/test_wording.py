@@ -11,18 +11,28 @@ import pytest
 from hypothesis import given
 from hypothesis import strategies as st
 
-from monitor.growthlog.records import Condition, Estimate, Evidence, Snapshot, Verdict
+from monitor.growthlog.records import (
+    Channel,
+    Condition,
+    Estimate,
+    Evidence,
+    History,
+    Snapshot,
+    Verdict,
+)
 from monitor.wording import (
     age_text,
     box_text,
     clean,
     condition_sign,
     count,
+    drift_text,
     duration_text,
     estimate_text,
     exact,
     factor_text,
     headroom_text,
+    history_text,
     number,
     snapshot_line,
     steps_text,
@@ -275,3 +285,35 @@ def test_wording_needs_no_array_or_screen_library() -> None:
         [sys.executable, "-P", "-c", code], capture_output=True, text=True, timeout=60, check=True
     )
     assert not {"numpy", "textual", "rich"} & set(done.stdout.split())
+
+
+def test_a_history_in_one_sentence() -> None:
+    """Value, place, condition, why and how long; as it stands in the file where it is no number."""
+    verdict = Verdict(
+        condition="swelling",
+        why="energy: its changes grew",
+        ruin=Estimate(140.0, 131.0, 152.0, 0.8),
+    )
+    grows = History(
+        seq=1, at=0.0, name="energy", file="", sample=7, step=1203, value=317.4, verdict=verdict
+    )
+    told = "energy 317.4 at step 1,203, swelling: its changes grew; ruin in 131 to 152 steps"
+    assert history_text(grows) == told
+    stars = History(
+        seq=1,
+        at=0.0,
+        name="e\x1b",
+        file="",
+        sample=7,
+        value="nan",
+        print="***",
+        verdict=Verdict(condition="quiet"),
+    )
+    assert history_text(stars) == "e\\x1b *** at line 8, quiet"
+
+
+def test_drifts_of_totals() -> None:
+    """With their sign, nothing for fields that are not conserved."""
+    channels = (Channel("h", 0.0, 1.0, drift=1.234e-9), Channel("u", 0.0, 1.0))
+    assert drift_text(Evidence(channels=channels)) == "total of h +1.2e-9"
+    assert drift_text(Evidence(channels=channels[1:])) == ""

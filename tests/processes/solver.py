@@ -2,7 +2,9 @@
 
 Writes ``T_{step}.npy`` into a folder. With `factor` above one the step is too long for the corner,
 by that factor of its limit 1/4 (von Neumann's condition for the five-point scheme), from step
-`sick-from` on: until then it is 0.9 of it. `pace` is in real seconds between snapshots.
+`sick-from` on: until then it is 0.9 of it. `pace` is in real seconds between snapshots. With
+`history` the temperature of a cell in that corner is printed into a text file at every step,
+`haste` real seconds apart.
 """
 
 from __future__ import annotations
@@ -33,6 +35,8 @@ def main(words: Sequence[str] | None = None) -> None:
     parser.add_argument("--in-place", action="store_true")
     parser.add_argument("--cells", type=int, default=CELLS)
     parser.add_argument("--burst-at", type=int, default=-1)
+    parser.add_argument("--history", type=Path)
+    parser.add_argument("--haste", type=float, default=0.0)
     options = parser.parse_args(words)
     options.out.mkdir(parents=True, exist_ok=True)
     u = initial(options.cells)
@@ -45,6 +49,11 @@ def main(words: Sequence[str] | None = None) -> None:
             if options.stop_file is not None and options.stop_file.exists():
                 return
             time.sleep(options.pace)
+        if options.history is not None:
+            tell(options.history, step, u)
+            if options.stop_file is not None and options.stop_file.exists():
+                return
+            time.sleep(options.haste)
         u = advance(u, well if step < options.sick_from else sick)
 
 
@@ -69,6 +78,14 @@ def advance(u: NDArray[np.float64], number: NDArray[np.float64]) -> NDArray[np.f
             u[2:, 1:-1] + u[:-2, 1:-1] + u[1:-1, 2:] + u[1:-1, :-2] - 4.0 * u[1:-1, 1:-1]
         )
         return u + number * change
+
+
+def tell(path: Path, step: int, u: NDArray[np.float64]) -> None:
+    """One line as Fortran would write it, headings first."""
+    with path.open("a") as file:
+        if step == 0:
+            file.write(" # plate\n    step      corner\n")
+        file.write(f" {step:7d}  {u[-12, -12]:.16e}\n".replace("e", "D"))
 
 
 def name(names: str, step: int, every: int) -> str:

@@ -171,6 +171,18 @@ def test_a_restart_is_a_new_segment(scene: Scene) -> None:
     assert [s.index for s in scene.snapshots() if s.seg == 2] == list(range(1, 10))
 
 
+def test_a_mended_run_ends_well_in_the_log_of_the_failed_one(scene: Scene) -> None:
+    """An alarmed log taken up again ends with 10 as long as its segment goes on, with 0 once the
+    run was started again with a step that holds."""
+    scene.solved("--factor", 1.1, "--last", 300)
+    assert scene.guarded(*PATTERN, "--catch-up") == 10
+    assert scene.guarded(*PATTERN, "--catch-up") == 10
+    scene.solved("--factor", 0.9, "--last", 290)
+    assert scene.guarded(*PATTERN, "--last-step", 290) == 0
+    assert [r.number for r in scene.records() if isinstance(r, Segment)] == [1, 2]
+    assert scene.closed().status == 0
+
+
 def test_a_late_snapshot_is_recorded_and_not_used(scene: Scene) -> None:
     """A file of an earlier step and an earlier time turns up (copied from elsewhere)."""
     scene.solved("--last", 100)

@@ -351,6 +351,7 @@ def test_between_two_rungs_the_next_is_taken(make: Make, log: FakeLog) -> None:
 
 def test_killed_right_after_hold(make: Make, log: FakeLog, tmp_path: Path) -> None:
     """HOLD was written and nothing else: the first rung is taken."""
+    (tmp_path / "HOLD").touch()
     ladder = make(FILE)
     ladder.resume([Deed(intent("hold"), [outcome("hold", "done")])], 1000.0)
     ladder.advance(1000.0)
@@ -366,6 +367,24 @@ def test_the_run_ended_while_guard_was_away(make: Make, log: FakeLog, start_job:
     ladder.resume([Deed(intent("signal"))], 1000.0)
     assert log.outcomes("signal") == ["accepted"]
     assert log.only(Intent) == []
+
+
+@pytest.mark.parametrize("outcomes", [[], ["done"]], ids=["cut-off", "waiting"])
+def test_a_stop_is_given_up_when_hold_is_taken_away(
+    outcomes: list[str], make: Make, log: FakeLog, tmp_path: Path
+) -> None:
+    """HOLD was written before the first rung. Where it is gone when the next guard comes, somebody
+    has mended the run: neither the rung that was cut off nor the next one is done to it."""
+    held = Deed(intent("hold"), [outcome("hold", "done")])
+    cut = Deed(intent("command"), [outcome("command", o) for o in outcomes])
+    ladder = make(command("open('ran', 'w')", wait=1.0), FILE)
+    ladder.resume([held, cut], 1000.0)
+    ladder.arrived(1100.0)
+    ladder.advance(1100.0)
+    assert not ladder.active
+    assert not ladder.failed
+    assert log.records == []
+    assert not (tmp_path / "STOP").exists()
 
 
 # --- showing --------------------------------------------------------------------------------

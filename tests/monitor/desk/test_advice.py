@@ -5,14 +5,24 @@ from __future__ import annotations
 from collections.abc import Callable
 
 import pytest
+from msgspec.structs import replace
 
 from monitor.desk.advice import Health, advice, guard, headline, left, plan, rows, where
 from monitor.desk.parts.part import Scene
-from monitor.growthlog.records import Closed, Estimate, Outcome, PulseChange
+from monitor.growthlog.records import (
+    Closed,
+    Estimate,
+    History,
+    Outcome,
+    PulseChange,
+    Snapshot,
+    Verdict,
+)
 from tests.monitor.desk import made_runs
 from tests.monitor.desk.made_runs import Maker, healthy, overflowed, runaway, stalled, stopped
 
 SceneOf = Callable[..., Scene]
+QUIET = Verdict(condition="quiet")
 
 
 def verdict(scene: Scene) -> dict[str, str]:
@@ -191,3 +201,36 @@ def test_no_sentence_has_an_empty_piece(scene: SceneOf) -> None:
     for make in ("healthy", "runaway", "stopped", "overflowed", "stalled", "three_fields"):
         for text in verdict(scene(getattr(made_runs, make)())).values():
             assert text.strip(" ;,:") == text
+
+
+def test_the_drift_of_totals_is_a_number_on_the_screen(scene: SceneOf) -> None:
+    """Beside where the run is, for fields that are declared conserved."""
+    made = healthy()
+    at = max(i for i, r in enumerate(made.records) if isinstance(r, Snapshot))
+    last = made.records[at]
+    assert isinstance(last, Snapshot)
+    channel = replace(last.evidence.channels[0], drift=3.4e-9)
+    made.records[at] = replace(last, evidence=replace(last.evidence, channels=(channel,)))
+    assert "total of T +3.4e-9" in verdict(scene(made))["run"]
+    assert "total" not in verdict(scene(healthy()))["run"]
+
+
+def test_histories_stand_beside_the_fields(scene: SceneOf) -> None:
+    """The worst first; one that is an alarm asks for what an alarm of the fields would."""
+    made = healthy()
+    made.add(History, name="dt", file="", sample=9, step=9, value=0.1, verdict=QUIET)
+    grows = Verdict(condition="swelling", why="energy: its changes grew", field="energy")
+    made.add(History, name="energy", file="", sample=9, step=9, value=5.0, verdict=grows)
+    shown = scene(made)
+    row = next(r for r in rows(shown.story, shown.health, shown.now) if r.label == "also")
+    assert row.text.startswith("energy 5 at step 9, swelling: its changes grew; dt 0.1")
+    assert row.style == "swelling"
+    assert [e.text for e in shown.story.events][-1].startswith("history energy 5 at step 9")
+    assert verdict(shown)["act"] == "nothing to do"
+    alarm = Verdict(condition="runaway", alarmed=True, field="energy", onset=(1790, 1900))
+    made.add(History, name="energy", file="", sample=99, step=1999, value=5.0, verdict=alarm)
+    told = verdict(scene(made))
+    assert told["act"] == "stand by: guard is about to stop the run"
+    assert "step 1,200, pinned" in told["clean"]
+    assert "before the growth can have begun (step 1790)" in told["clean"]
+    assert "also" not in verdict(scene(healthy()))

@@ -16,6 +16,7 @@ from monitor.growthlog.records import (
     AnyRecord,
     Channel,
     Evidence,
+    History,
     Mode,
     Remark,
     Skipped,
@@ -25,7 +26,7 @@ from monitor.growthlog.records import (
     Worst,
 )
 from monitor.growthlog.write import as_logged, encode
-from tests.monitor.growthlog.any_records import any_evidence, any_record, any_snapshot
+from tests.monitor.growthlog.any_records import any_evidence, any_record, any_snapshot, structs
 
 
 def snapshot(evidence: Evidence, **changes: Any) -> Snapshot:
@@ -68,9 +69,10 @@ def test_any_json_reader_understands_a_line(record: AnyRecord) -> None:
 
 
 @settings(deadline=None)
-@given(any_record.filter(lambda record: not isinstance(record, Snapshot | TileMap)))
+@given(any_record.filter(lambda record: not isinstance(record, Snapshot | History | TileMap)))
 def test_other_records_come_back_unchanged(record: AnyRecord) -> None:
-    """Only the numbers of snapshots and maps are rounded, and wall-clock times to milliseconds."""
+    """Only the numbers of snapshots, histories and maps are rounded, and wall-clock times to
+    milliseconds."""
     back = decode(encode(record))
     assert msgspec.structs.replace(back, at=record.at) == record
     assert back.at == pytest.approx(record.at, abs=6e-4)
@@ -94,6 +96,17 @@ def test_what_is_decided_upon_is_what_the_log_holds(evidence: Evidence) -> None:
 def test_a_snapshot_record_is_short(record: Snapshot, path: str) -> None:
     """Whatever is in it, a snapshot record stays below 4,000 bytes."""
     assert len(encode(msgspec.structs.replace(record, path=path))) < 4000
+
+
+@settings(max_examples=200, deadline=None)
+@given(structs(History, wild=True), st.text(max_size=5000))
+def test_a_history_record_is_short_and_stable(record: History, text: str) -> None:
+    """Whatever is in it, it fits into one write, and what is read of it is written the same."""
+    record = msgspec.structs.replace(record, at=50.0, name=text, print=text)
+    line = encode(msgspec.structs.replace(record, verdict=Verdict(condition="quiet", why=text)))
+    assert len(line) < 4000
+    assert encode(decode(line)) == line
+    assert encode(decode(encode(record))) == encode(record)
 
 
 def test_steps_and_times_are_exact() -> None:

@@ -162,6 +162,19 @@ def test_what_is_left_out_and_in_which_order() -> None:
     assert seen.cut == 4 + 1 + 1 + (4 - len(seen.modes)) + (30 - len(seen.channels))
 
 
+def test_fields_with_bounds_are_cut_last() -> None:
+    """A broken bound must not be overlooked because a field has the calmest ripple of thirty."""
+    from msgspec.structs import replace
+
+    maker = Maker(77_003)
+    evidence = maker.evidence([f"species_{n:02d}" for n in range(30)], 2, 3)
+    channels = list(evidence.channels)
+    channels[11] = replace(channels[11], bounded=True, ripple=-99.0)
+    seen = as_logged(replace(evidence, channels=tuple(channels)))
+    assert seen.cut > 10
+    assert channels[11].f in [c.f for c in seen.channels]
+
+
 def test_long_sentences_and_paths_are_shortened_where_it_hurts_least() -> None:
     """A sentence loses its end and a path its beginning."""
     maker = Maker(31)

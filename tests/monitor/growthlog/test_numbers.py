@@ -80,3 +80,12 @@ def test_an_estimate_is_rounded_like_what_it_estimates() -> None:
     kept = rounded(verdict)
     assert kept.factor == Estimate(1.02041, 1.0204, 1.02043, 0.9)
     assert kept.ruin == Estimate(123.5, 100.0, "inf", 0.8)
+
+
+def test_extremes_of_a_field_with_bounds_carry_eight_digits() -> None:
+    """How far a pressure is from its bound must be known; elsewhere four digits do."""
+    lo, hi = 101_324.2375, 101_377.4
+    assert rounded(Channel("p", lo, hi)).lo == 101_300.0
+    kept = rounded(Channel("p", lo, hi, bounded=True))
+    assert (kept.lo, kept.hi) == (101_324.24, 101_377.4)
+    assert rounded(kept) == kept

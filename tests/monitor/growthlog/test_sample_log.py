@@ -16,6 +16,8 @@ from monitor.growthlog.records import (
     Channel,
     CloseUp,
     Estimate,
+    HeardAlarm,
+    History,
     Intent,
     Line,
     Mode,
@@ -167,3 +169,19 @@ def test_what_the_other_records_said(records: list[AnyRecord]) -> None:
     skipped = only(records, Skipped)
     assert isinstance(skipped, Skipped)
     assert (skipped.reason, skipped.step) == ("held", 160)
+
+
+def test_what_histories_and_totals_said(records: list[AnyRecord]) -> None:
+    """A history with its growth, one printed as stars, and a snapshot that heard the first."""
+    energy, residual = (r for r in records if isinstance(r, History))
+    assert (energy.name, energy.sample, energy.step) == ("energy", 123, 124)
+    assert energy.value == 317.40625
+    assert (energy.count, energy.lo, energy.hi, energy.bad) == (17, 314.5, 317.40625, 0)
+    assert (energy.level, energy.floor) == (-4.25, -21.5)
+    assert energy.verdict.factor == Estimate(1.0616, 1.0608, 1.0625, 0.9)
+    assert energy.verdict.ruin == Estimate(140.0, 131.0, 152.0, 0.8)
+    assert (residual.step, residual.value, residual.print) == (None, "nan", "********")
+    heard = snapshot(records, 130)
+    assert heard.evidence.heard == (HeardAlarm("energy", "energy: its changes grew", (12, 28)),)
+    (channel,) = heard.evidence.channels
+    assert (channel.hi, channel.drift, channel.bounded) == (35.000125, -2.5e-9, True)

@@ -35,6 +35,21 @@ def test_waiting_ends_at_once() -> None:
         assert signals.caught == signal.SIGTERM
 
 
+def test_what_is_under_way_is_left_after_a_while(monkeypatch: pytest.MonkeyPatch) -> None:
+    """Not before a signal, not at once, but some seconds after the first signal."""
+    now = 100.0
+    monkeypatch.setattr("monitor.guarding.signals.time.monotonic", lambda: now)
+    with Signals() as signals:
+        signals.hurry()
+        signal.raise_signal(signal.SIGTERM)
+        now += 9.0
+        signals.hurry()
+        signal.raise_signal(signal.SIGHUP)
+        now += 2.0
+        with pytest.raises(Interrupted):
+            signals.hurry()
+
+
 def test_not_entered_after_a_signal() -> None:
     """Nothing new is begun."""
     with Signals() as signals:
