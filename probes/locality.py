@@ -80,7 +80,8 @@ def cell_energy(before: Array, now: Array) -> Array:
     take a second difference, so that a mode at a boundary is seen too. Scaled to a largest value of
     one at most; zero where nothing differs.
     """
-    change = np.nan_to_num(now - before, nan=0.0, posinf=0.0, neginf=0.0)
+    with np.errstate(over="ignore", invalid="ignore"):
+        change = np.nan_to_num(now - before, nan=0.0, posinf=0.0, neginf=0.0)
     size = float(np.abs(change).max(initial=0.0))
     energy = np.zeros(change.shape)
     if size == 0.0:

@@ -77,13 +77,15 @@ def ritz_pairs(differences: Array, noise: float = 0.0) -> list[RitzPair]:
     values, vectors = np.linalg.eig(u.T @ y @ back)
     ritz = u @ vectors
     moved = y @ back @ vectors
-    residuals = np.linalg.norm(moved - values * ritz, axis=0) / np.linalg.norm(ritz, axis=0)
+    with np.errstate(over="ignore", invalid="ignore"):
+        # Growth by more than 1e154 between two snapshots leaves no residual to be told.
+        residuals = np.linalg.norm(moved - values * ritz, axis=0) / np.linalg.norm(ritz, axis=0)
     part = np.linalg.lstsq(ritz, r[:, -1].astype(complex), rcond=None)[0]
     whole = float(np.linalg.norm(r[:, -1]))
     combine = basis @ back @ vectors
     out = []
     for j, mu in enumerate(values):
-        if mu.imag < 0.0:
+        if mu.imag < 0.0 or not math.isfinite(residuals[j]):
             continue
         pair = 2.0 if mu.imag > 0.0 else 1.0
         vector = pair * part[j] * ritz[:, j]

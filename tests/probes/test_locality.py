@@ -81,3 +81,14 @@ def test_cell_energy_sees_the_zigzag_and_the_boundary() -> None:
     assert energy[:2].sum() > 0.0
     assert np.isfinite(energy).all()
     assert locality.cell_energy(before, before).sum() == 0.0
+
+
+def test_cell_energy_beside_an_overflow() -> None:
+    """Cells that became infinite, or changed by more than can be told, count nothing."""
+    before, now = np.zeros((8, 8)), np.zeros((8, 8))
+    before[:, :2], now[:, :2] = np.inf, np.inf
+    before[:, 2], now[:, 2] = -1e308, 1e308
+    now[:, 5] = np.where(np.arange(8) % 2, 1.0, -1.0)
+    energy = locality.cell_energy(before, now)
+    assert np.isfinite(energy).all()
+    assert energy[:, 3:].sum() == energy.sum() > 0.0

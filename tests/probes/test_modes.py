@@ -114,6 +114,12 @@ def test_noise_does_not_bias_towards_decay() -> None:
     assert np.median(plain) < truth - 0.05
 
 
+def test_a_leap_beyond_all_bounds_is_no_mode() -> None:
+    """A difference 1e200 times the one before, as at an overflow, gives no pair and no warning."""
+    leap = np.array([[1e-200, 1.0], [2e-200, -1.0], [1e-200, 0.5]])
+    assert modes.ritz_pairs(leap) == []
+
+
 def test_likeness_is_the_squared_cosine() -> None:
     """Parallel vectors 1, orthogonal 0, 60 degrees a quarter; a plane contains its vectors."""
     a = np.array([[1.0], [0.0], [0.0]])
